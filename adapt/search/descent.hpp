@@ -1,0 +1,35 @@
+#pragma once
+// Purpose:   coordinate descent with steps that start coarse and halve, and pattern moves (Hooke &
+//            Jeeves, J. ACM 8, 212-229, 1961; on coordinate descent: Wright, Math. Program. 151,
+//            3-34, 2015). It ends at codes that no single step along an axis improves: a local
+//            optimum, as a descent does.
+// Ownership: pure functions; moves and ledger belong to the caller.
+// Threads:   one caller at a time.
+//
+// The descent is not kept as a state: it is run anew from its start over what has been read, and
+// stops where it needs a reading that is not there. The same readings so give the same question.
+
+#include <memory>
+#include <span>
+#include <string>
+#include <vector>
+
+#include "adapt/search/ledger.hpp"
+#include "adapt/search/moves.hpp"
+#include "adapt/search/procedure.hpp"
+
+namespace lanewright {
+
+struct Question {
+    std::vector<Codes> wanted;  // not read yet; empty: finished
+    std::string why;
+};
+
+// What a descent from `start` wants read next. `start` must be in the ledger.
+Question descend(const CodeSpace& space, const Moves& moves, const Ledger& ledger, Codes start);
+
+std::unique_ptr<Procedure> make_descent(const LaneProblem&, std::span<const Lesson>, RandomKey);
+std::unique_ptr<Procedure> make_descent_axes(const LaneProblem&, std::span<const Lesson>,
+                                             RandomKey);
+
+}  // namespace lanewright

@@ -1,0 +1,85 @@
+#include "adapt/search/ledger.hpp"
+
+#include <algorithm>
+#include <cmath>
+#include <tuple>
+
+namespace lanewright {
+namespace {
+
+constexpr std::size_t no_limit = std::size_t{1} << 40;
+
+// Whole readings that fit into what is left; the slack forgives rounding in a sum of costs.
+std::size_t fitting(double budget, double spent, double each) {
+    if (!(budget > 0) || !(each > 0)) return no_limit;
+    const double left = (budget - spent) / each + 1e-6;
+    if (!(left >= 1)) return 0;
+    return left > static_cast<double>(no_limit) ? no_limit : static_cast<std::size_t>(left);
+}
+
+}  // namespace
+
+std::size_t codes_changed(const Codes& a, const Codes& b) {
+    const std::size_t common = std::min(a.value.size(), b.value.size());
+    std::size_t changed = std::max(a.value.size(), b.value.size()) - common;
+    for (std::size_t i = 0; i < common; ++i) changed += a.value[i] != b.value[i] ? 1 : 0;
+    return changed;
+}
+
+void Ledger::add(const Codes& asked, const Reading& reading) {
+    if (reading.status == Status::void_reading) return;
+    const Request behind = request(asked, reading.condition, {});
+    reading_count_ += 1;
+    standard_readings_ += lanewright::standard_readings(problem_->cost, behind);
+    bench_s_ += reading.cost_s > 0 ? reading.cost_s : cost_s(problem_->cost, behind);
+    if (reading.codes != asked) aliases_.insert_or_assign(asked, reading.codes);
+    auto& entry = entries_[reading.codes];
+    if (entry.readings.empty()) {
+        entry.first = merit_of(reading, problem_->required);
+        entry.ordinal = entries_.size() - 1;
+    }
+    entry.readings.push_back(reading);
+}
+
+const Ledger::Entry* Ledger::find(const Codes& asked) const {
+    if (const auto direct = entries_.find(asked); direct != entries_.end()) return &direct->second;
+    const auto alias = aliases_.find(asked);
+    if (alias == aliases_.end()) return nullptr;
+    const auto found = entries_.find(alias->second);
+    return found == entries_.end() ? nullptr : &found->second;
+}
+
+std::vector<Codes> Ledger::ranking() const {
+    std::vector<std::pair<const Codes*, const Entry*>> order;
+    for (const auto& [codes, entry] : entries_) {
+        if (problem_->space->allows(codes)) order.emplace_back(&codes, &entry);
+    }
+    const auto key = [&](const auto& each) {
+        return std::tuple(codes_changed(*each.first, problem_->present), *each.first);
+    };
+    std::sort(order.begin(), order.end(), [&](const auto& a, const auto& b) {
+        const auto merits = a.second->first <=> b.second->first;
+        return merits != 0 ? merits > 0 : key(a) < key(b);
+    });
+    std::vector<Codes> ranking;
+    ranking.reserve(order.size());
+    for (const auto& each : order) ranking.push_back(*each.first);
+    return ranking;
+}
+
+bool Ledger::limited() const {
+    return problem_->budget.standard_readings > 0 || problem_->budget.bench_s > 0;
+}
+
+std::size_t Ledger::affordable() const {
+    const Request one = request(problem_->present, {}, {});
+    return std::min(fitting(problem_->budget.standard_readings, standard_readings_,
+                            lanewright::standard_readings(problem_->cost, one)),
+                    fitting(problem_->budget.bench_s, bench_s_, cost_s(problem_->cost, one)));
+}
+
+Request Ledger::request(Codes codes, Condition now, std::string why) const {
+    return {std::move(codes), now, problem_->reading, std::move(why)};
+}
+
+}  // namespace lanewright

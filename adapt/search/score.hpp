@@ -1,0 +1,60 @@
+#pragma once
+// Purpose:   one number for a margin: how many times the required opening it has.
+// Ownership: pure functions on values.
+// Threads:   any.
+//
+// score = the smaller of 2 min(up, down) / required height and 2 min(left, right) / required width;
+// 1 just passes. Where the monitor tells only height and width (`centred_assumed`), it is the
+// smaller of height / required height and width / required width. A requirement of 0 leaves its
+// direction out.
+//
+// Limits are 95 % two-sided: 2.5 % on each side. The score is the smallest of several sides, so
+//   low  = the smallest lower limit of a side (1.96 standard errors): whichever side is truly the
+//          smallest, it is above its own limit with 97.5 %;
+//   high = the smallest upper limit of a side, each at 2.5 % / number of sides (Bonferroni; 2.50
+//          standard errors for four sides), as any one of them could be too low by chance.
+// A side known only as "at most" (a closed latched eye) counts as 0, its lower limit is unknown
+// (-infinity) and its upper limit starts at the bound. A side known only as "at least" counts as its
+// bound and has no upper limit.
+
+#include <span>
+
+#include "adapt/search/procedure.hpp"
+#include "adapt/values/values.hpp"
+
+namespace lanewright {
+
+struct Score {
+    double value = 0;
+    double low = 0, high = 0;     // may be infinite
+    double std_error = 0;         // of the side that sets the value
+    Bound bound = Bound::exact;   // of that side
+    Basis basis = Basis::counted;
+    Status status = Status::void_reading;
+};
+
+// No lock: value and low -infinity, high 0 (or that of the edges, in a mean that has some).
+// Void, or an edge missing that the requirement needs: value and low -infinity, high +infinity.
+Score score_of(const Reading& reading, const Required& required);
+
+// Several readings of the same codes as one, edge by edge. `noise` tells how much of the standard
+// error is the monitor's step.
+//
+// A step does not average away like noise: without noise every reading of an eye gives the same
+// step, and the mean is as wrong as one. With Gaussian noise of sigma the error that no number of
+// readings removes has the variance sum over k of step^2 / (2 pi^2 k^2) exp(-(2 pi k sigma /
+// step)^2), which is step^2/12 without noise and vanishes from sigma = step/2 on (Widrow & Kollar,
+// "Quantization Noise", 2008). It is taken with the smaller of the declared and the observed sigma,
+// and the rest of the variance, over the number of readings, with the larger of the two: each is
+// the unfavourable choice.
+//
+// Edges that are bounds: all "at most" or all "at least" stay so, and the loosest bound is kept;
+// mixed with plain values, the mean is a bound on the same side; both kinds of bound on one edge
+// leave nothing known (infinite standard error).
+// A reading without lock makes the whole no_lock. Void readings are left out.
+Reading mean_of(std::span<const Reading> readings, const MonitorNoise& noise);
+
+// Variance of a mean of `count` readings that stays even for count -> infinity; see mean_of.
+double lasting_variance(double step, double sigma);
+
+}  // namespace lanewright

@@ -1,0 +1,113 @@
+#include "daemon/cli/progress.hpp"
+
+#include <algorithm>
+#include <cmath>
+#include <cstdio>
+
+#include "adapt/search/score.hpp"
+
+namespace lanewright {
+
+namespace {
+
+constexpr std::size_t columns = 79;  // a full 80th column makes some terminals wrap
+constexpr auto between_draws = std::chrono::milliseconds(100);
+
+// Strategies say why they read in a sentence; its first words name the phase.
+std::string short_phase(const std::string& why) {
+    const std::string phase = why.substr(0, why.find(':'));
+    return phase.size() <= 24 ? phase : phase.substr(0, 24);
+}
+
+}  // namespace
+
+Progress::Progress(ProgressPlan plan, bool terminal)
+    : plan_(std::move(plan)), terminal_(terminal) {
+    for (const std::uint16_t lane : plan_.lanes) lines_[lane];
+}
+
+void Progress::on_event(const StoredEvent& event) noexcept {
+    try {
+        take(event);
+    } catch (...) {
+        // A progress line is never worth a run.
+        terminal_ = false;
+    }
+}
+
+void Progress::take(const StoredEvent& stored) {
+    const std::optional<Lane> lane = lane_of(stored.event);
+    if (!lane || lines_.find(number(*lane)) == lines_.end()) return;
+    LaneLine& line = lines_[number(*lane)];
+    if (const auto* intent = std::get_if<Intent>(&stored.event)) {
+        line.phase = intent->stage == Stage::compare ? "before/after"
+                                                     : short_phase(intent->request.why);
+    } else if (const auto* taken = std::get_if<ReadingTaken>(&stored.event)) {
+        const double score = score_of(taken->reading, plan_.required).value;
+        if (std::isfinite(score)) line.best_score = std::max(score, line.best_score.value_or(score));
+        ++line.reading_count;
+        line.bench_s += taken->reading.cost_s;
+        if (line.phase != "before/after") line.search_s += taken->reading.cost_s;
+    } else if (const auto* empty = std::get_if<ReadingVoid>(&stored.event)) {
+        say(number(*lane), "void reading, taken anew: " + empty->cause);
+    } else if (const auto* decided = std::get_if<LaneDecided>(&stored.event)) {
+        line.phase = "decided";
+        say(number(*lane), "decided after " + std::to_string(line.reading_count) +
+                               " readings: " + decided->decision.reason);
+    } else if (const auto* finished = std::get_if<LaneFinished>(&stored.event)) {
+        line.phase = name_of(finished->outcome);
+        line.done = true;
+        say(number(*lane), std::string(name_of(finished->outcome)) +
+                               (finished->outcome == LaneOutcome::failed ? ": " + finished->reason : ""));
+    }
+    if (terminal_) draw(false);
+}
+
+void Progress::say(std::uint16_t lane, const std::string& text) const {
+    if (!terminal_) std::fprintf(stderr, "lane %u: %s\n", static_cast<unsigned>(lane), text.c_str());
+}
+
+// Bench time that the budget still allows, as declared; the lanes run side by side.
+std::string Progress::time_left(const LaneLine& line) const {
+    if (line.done) return "";
+    if (line.reading_count == 0 || (plan_.budget_readings <= 0 && plan_.budget_bench_s <= 0)) {
+        return "?";
+    }
+    const double each = line.search_s > 0 ? line.search_s / static_cast<double>(line.reading_count)
+                                          : 0;
+    double left = plan_.budget_bench_s > 0 ? plan_.budget_bench_s - line.search_s : 1e9;
+    if (plan_.budget_readings > 0) {
+        left = std::min(left, plan_.budget_readings * each - line.search_s);
+    }
+    char text[32];
+    std::snprintf(text, sizeof text, "<%.0f s left", std::ceil(std::max(left, 0.0)));
+    return text;
+}
+
+std::string Progress::line_of(std::uint16_t lane, const LaneLine& line) const {
+    char score[16] = "-";
+    if (line.best_score) std::snprintf(score, sizeof score, "%.2f", *line.best_score);
+    char text[160];
+    std::snprintf(text, sizeof text, "lane %2u  %-24s best %6s  %4zu readings  %6.1f s  %s",
+                  static_cast<unsigned>(lane), line.phase.c_str(), score, line.reading_count,
+                  line.bench_s, time_left(line).c_str());
+    return std::string(text).substr(0, columns);
+}
+
+void Progress::draw(bool now) {
+    const auto at = std::chrono::steady_clock::now();
+    if (!now && at - last_drawn_ < between_draws) return;
+    last_drawn_ = at;
+    std::string out;
+    if (drawn_ > 0) out += "\033[" + std::to_string(drawn_) + "A";
+    for (const auto& [lane, line] : lines_) out += "\r\033[K" + line_of(lane, line) + "\n";
+    drawn_ = lines_.size();
+    std::fputs(out.c_str(), stderr);
+    std::fflush(stderr);
+}
+
+void Progress::finish() {
+    if (terminal_) draw(true);
+}
+
+}  // namespace lanewright

@@ -1,0 +1,21 @@
+#pragma once
+// Purpose:   where output goes and how it may look there.
+// Ownership: none. Threads: the main thread.
+
+#include <string>
+
+#include "drivers/faults/fault.hpp"
+
+namespace lanewright {
+
+// Colours on that descriptor: a terminal, no NO_COLOR (no-color.org), TERM not "dumb".
+bool may_colour(int descriptor);
+bool is_terminal(int descriptor);
+
+void print(const std::string& text);          // stdout
+void print_error(const std::string& text);    // stderr, with a newline
+
+// The fault as the verb's last word: JSON object on stdout or a line on stderr; its exit code.
+int report(const Fault& fault, bool json);
+
+}  // namespace lanewright

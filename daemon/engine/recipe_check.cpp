@@ -1,0 +1,203 @@
+// What a recipe asks of a board, held against what its board file says it can do.
+#include <algorithm>
+#include <charconv>
+#include <cmath>
+#include <utility>
+
+#include "daemon/engine/recipe.hpp"
+
+namespace lanewright {
+
+namespace {
+
+std::string short_number(double value) {
+    char buffer[32];
+    const auto end =
+        std::to_chars(std::begin(buffer), std::end(buffer), value, std::chars_format::general, 6)
+            .ptr;
+    return std::string(buffer, end);
+}
+
+class Check {
+  public:
+    Check(const Recipe& recipe, const BoardFile& board, Complaints& complaints)
+        : recipe_(recipe), board_(board), complaints_(complaints) {}
+
+    void lanes() {
+        if (!recipe_.lanes) return;
+        const std::uint16_t count = board_.map.lane_count;
+        for (const std::uint16_t lane : *recipe_.lanes) {
+            if (lane < count) continue;
+            complain("/lanes", "lane " + std::to_string(lane),
+                     "lanes of board " + board_.name + ", 0 to " + std::to_string(count - 1));
+            return;
+        }
+    }
+
+    void dimensions() {
+        std::vector<std::string_view> names;
+        for (const DimensionDescription& dimension : board_.dimensions)
+            names.push_back(dimension.name);
+        for (std::size_t i = 0; i < recipe_.dimensions.size(); ++i)
+            one_of("/dimensions/" + std::to_string(i), recipe_.dimensions[i], names,
+                   "a dimension of board " + board_.name);
+    }
+
+    void strategy(const std::vector<std::string_view>& names) {
+        one_of("/strategy/name", recipe_.strategy.name, names, "a strategy");
+    }
+
+    void error_ratios() {
+        ratio_in_reach("/required/error_ratio", recipe_.required.error_ratio);
+        ratio_in_reach("/search_error_ratio", recipe_.search_error_ratio);
+        // Rule of three: with fewer than -ln(0.05) errors expected in a look, a position at the
+        // error ratio shows none in more than one look of twenty and passes for error-free.
+        const double least_errors = -std::log(0.05);
+        const double bits = static_cast<double>(dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps));
+        const double errors = bits * recipe_.search_error_ratio;
+        if (errors >= least_errors) return;
+        const double longer_s =
+            least_errors / (recipe_.search_error_ratio * board_.bit_rate_gbps * 1e9);
+        complain("/search_error_ratio",
+                 short_number(recipe_.search_error_ratio) + ", " + short_number(errors) +
+                     " errors in a look of " + short_number(recipe_.dwell_s) + " s",
+                 "an error ratio of which one look shows about 3 errors",
+                 "a dwell_s of " + short_number(longer_s) + " or an error ratio of " +
+                     short_number(bits > 0 ? least_errors / bits : 0.1) + " would do");
+    }
+
+    void monitor_range() {
+        const MonitorDescription& monitor = board_.monitor;
+        // The score takes twice the smaller edge, so each edge must reach half of what is required.
+        const double edges = monitor.four_edges ? 2 : 1;
+        within_range("/required/height_mv", recipe_.required.height_mv, monitor.height, edges,
+                     " mV");
+        within_range("/required/width_ui", recipe_.required.width_ui, monitor.width, edges, " UI");
+    }
+
+    // What the monitor's sequence writes into fields must fit their limits.
+    void parameters() {
+        for (const Step& step : board_.monitor.sequence) {
+            const auto* write = std::get_if<WriteStep>(&step);
+            if (write == nullptr) continue;
+            const auto* parameter = std::get_if<Parameter>(&write->value);
+            const FieldDescription* field = board_.map.find(write->field);
+            if (parameter == nullptr || field == nullptr) continue;
+            if (*parameter == Parameter::dwell_log2) dwell_fits(write->field, *field);
+            if (*parameter == Parameter::dwell_bits_high) high_bits_fit(write->field, *field);
+            if (*parameter == Parameter::ratio_exponent) {
+                exponent_fits("/required/error_ratio", recipe_.required.error_ratio, write->field,
+                              *field);
+                exponent_fits("/search_error_ratio", recipe_.search_error_ratio, write->field,
+                              *field);
+            }
+        }
+    }
+
+  private:
+    // The place of the value, or of what it would stand in where it was left at its default.
+    void complain(const std::string& pointer, std::string found, std::string expected,
+                  std::string hint = {}) {
+        std::string at = pointer;
+        auto place = recipe_.places.find(at);
+        while (place == recipe_.places.end() && !at.empty()) {
+            at.erase(at.rfind('/'));
+            place = recipe_.places.find(at);
+        }
+        Complaint complaint{recipe_.path,   0, 0, pointer, std::move(found), std::move(expected),
+                            std::move(hint)};
+        if (place != recipe_.places.end()) {
+            complaint.line = place->second.line;
+            complaint.column = place->second.column;
+        }
+        complaints_.add(std::move(complaint));
+    }
+
+    void one_of(const std::string& pointer, const std::string& word,
+                const std::vector<std::string_view>& words, const std::string& what) {
+        if (std::find(words.begin(), words.end(), word) != words.end()) return;
+        std::string expected = what + ":";
+        for (const std::string_view candidate : words)
+            expected += (candidate == words.front() ? " " : ", ") + std::string(candidate);
+        const std::string near = nearest_word(word, words);
+        complain(pointer, "\"" + word + "\"", std::move(expected),
+                 near.empty() ? "" : "did you mean \"" + near + "\"?");
+    }
+
+    void ratio_in_reach(const std::string& pointer, double ratio) {
+        const double lowest = board_.monitor.lowest_error_ratio;
+        if (ratio >= lowest) return;
+        complain(pointer, short_number(ratio),
+                 "at least " + short_number(lowest) + ", the lowest that the monitor of board " +
+                     board_.name + " latches",
+                 "a latched edge cannot be extrapolated to another error ratio");
+    }
+
+    void within_range(const std::string& pointer, double required, const StepSize& size,
+                      double edges, const std::string& unit) {
+        const double reach = edges * size.size * size.most_steps;
+        if (required <= reach) return;
+        complain(pointer, short_number(required) + unit,
+                 "at most " + short_number(reach) + unit + ", the range of the monitor");
+    }
+
+    void dwell_fits(const FieldName& name, const FieldDescription& field) {
+        const std::uint64_t bits = dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps);
+        const double exponent = bits > 0 ? std::ceil(std::log2(static_cast<double>(bits))) : 0;
+        if (exponent >= field.lowest_allowed() && exponent <= field.highest_allowed()) return;
+        const auto seconds = [&](std::uint32_t log2) {
+            return short_number(std::ldexp(1.0, static_cast<int>(std::min(log2, 64u))) /
+                                (board_.bit_rate_gbps * 1e9));
+        };
+        complain("/dwell_s", short_number(recipe_.dwell_s),
+                 "at most " + seconds(field.highest_allowed()) + " s and at least " +
+                     seconds(field.lowest_allowed()) + " s, the limits of " + name.text());
+    }
+
+    void high_bits_fit(const FieldName& name, const FieldDescription& field) {
+        const std::uint64_t high = dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps) >> 32;
+        if (high <= field.highest_allowed()) return;
+        complain("/dwell_s", short_number(recipe_.dwell_s),
+                 "a dwell whose bits fit into " + name.text());
+    }
+
+    void exponent_fits(const std::string& pointer, double ratio, const FieldName& name,
+                       const FieldDescription& field) {
+        const double exponent = -std::log10(ratio);
+        const double whole = std::round(exponent);
+        const bool power_of_ten = std::abs(exponent - whole) < 1e-9;
+        if (power_of_ten && whole >= field.lowest_allowed() && whole <= field.highest_allowed())
+            return;
+        complain(pointer, short_number(ratio),
+                 "a power of ten from 1e-" + std::to_string(field.highest_allowed()) + " to 1e-" +
+                     std::to_string(field.lowest_allowed()) + ", which is what " + name.text() +
+                     " can be set to");
+    }
+
+    const Recipe& recipe_;
+    const BoardFile& board_;
+    Complaints& complaints_;
+};
+
+}  // namespace
+
+std::uint64_t dwell_bits(double dwell_s, double bit_rate_gbps) {
+    const double bits = dwell_s * bit_rate_gbps * 1e9;
+    if (!(bits > 0)) return 0;
+    // Rounded, so that 0.1 s at 25 Gb/s is the 2,500,000,000 bits it reads as.
+    return bits < 9.2e18 ? static_cast<std::uint64_t>(std::llround(bits)) : std::uint64_t{1} << 63;
+}
+
+void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
+                                const std::vector<std::string_view>& strategy_names,
+                                Complaints& complaints) {
+    Check check(recipe, board, complaints);
+    check.lanes();
+    check.dimensions();
+    check.strategy(strategy_names);
+    check.error_ratios();
+    check.monitor_range();
+    check.parameters();
+}
+
+}  // namespace lanewright

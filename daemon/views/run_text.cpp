@@ -1,0 +1,306 @@
+#include "daemon/views/run_text.hpp"
+
+#include <cmath>
+#include <cstdio>
+#include <sstream>
+
+#include "daemon/store/store_error.hpp"
+
+namespace lanewright {
+
+namespace {
+
+// printf into a string; every caller's text is far below the limit.
+template <class... Values>
+std::string format(const char* pattern, Values... values) {
+    char text[256];
+    std::snprintf(text, sizeof text, pattern, values...);
+    return text;
+}
+
+std::string codes_text(const CodeSpace& space, const Codes& codes, char between) {
+    std::string out;
+    for (std::size_t i = 0; i < codes.value.size(); ++i) {
+        if (!out.empty()) out += between;
+        if (i < space.dimensions().size() && between == ' ') out += space.dimensions()[i].name + "=";
+        out += std::to_string(codes.value[i]);
+    }
+    return out;
+}
+
+std::optional<double> opening_of(const std::optional<Margin>& margin, bool height) {
+    if (!margin) return std::nullopt;
+    const Reading& reading = margin->reading;
+    const auto& whole = height ? reading.height_mv : reading.width_ui;
+    const auto& one = height ? reading.up_mv : reading.left_ui;
+    const auto& other = height ? reading.down_mv : reading.right_ui;
+    if (whole) return whole->value;
+    if (one && other) return one->value + other->value;
+    return std::nullopt;
+}
+
+std::string number_or_dash(const std::optional<double>& value, const char* pattern) {
+    return value && std::isfinite(*value) ? format(pattern, *value) : "-";
+}
+
+std::string score_text(const std::optional<Margin>& margin) {
+    if (!margin || !std::isfinite(margin->score.value)) return "-";
+    return format("%.2f", margin->score.value);
+}
+
+std::string limits_text(const std::optional<Margin>& margin) {
+    if (!margin) return "-";
+    const auto limit = [](double value) {
+        return std::isfinite(value) ? format("%.2f", value) : std::string("?");
+    };
+    return limit(margin->score.low) + ".." + limit(margin->score.high);
+}
+
+const char* colour_of(Verdict verdict) {
+    switch (verdict) {
+        case Verdict::meets: return "\033[32m";
+        case Verdict::fails: return "\033[31m";
+        case Verdict::undecided: return "\033[33m";
+    }
+    return "";
+}
+
+std::string verdict_cell(const LaneResult& lane, bool colour) {
+    const bool failed = lane.outcome == LaneOutcome::failed;
+    const std::string word = lane.judgement ? name_of(lane.judgement->verdict)
+                             : failed       ? "failed"
+                                            : "-";
+    std::string cell = format("%-9s", word.c_str());
+    if (!colour || (!lane.judgement && !failed)) return cell;
+    const char* escape = failed ? "\033[31m" : colour_of(lane.judgement->verdict);
+    return escape + cell + "\033[0m";
+}
+
+std::string head_of(const RunView& view) {
+    const Manifest& manifest = view.manifest;
+    std::string out = "run " + manifest.run + "  " + run_status(view.state) + "\n";
+    out += "board " + manifest.board + "  recipe " + manifest.recipe + "  seed " +
+           std::to_string(manifest.seed) + "  " + iso8601(manifest.started_ns, manifest.zone) + "\n";
+    if (!manifest.condition.empty()) out += "condition " + manifest.condition + "\n";
+    for (const auto& [key, value] : manifest.tags) out += "tag " + key + "=" + value + "\n";
+    const Required& required = view.recipe.required;
+    out += format("required %g mV x %g UI at error ratio %g", required.height_mv,
+                  required.width_ui, required.error_ratio) +
+           "\n";
+    if (manifest.identity.simulated) {
+        out += "SIMULATED BOARD: these results prove nothing about silicon\n";
+    }
+    return out;
+}
+
+// Breaks at spaces so that no line is longer than 80 columns.
+std::string wrapped(const std::string& text, const std::string& indent) {
+    std::istringstream words(text);
+    std::string out, line = indent, word;
+    while (words >> word) {
+        if (line.size() > indent.size() && line.size() + 1 + word.size() > 80) {
+            out += line + "\n";
+            line = indent;
+        }
+        line += (line.size() > indent.size() ? " " : "") + word;
+    }
+    return out + line + "\n";
+}
+
+std::string csv_number(double value) {
+    return std::isfinite(value) ? format("%.17g", value) : std::string();
+}
+
+std::string csv_text(const std::string& text) {
+    if (text.find_first_of(",\"\n\r") == std::string::npos) return text;
+    std::string out = "\"";
+    for (const char c : text) out += c == '"' ? std::string("\"\"") : std::string(1, c);
+    return out + "\"";
+}
+
+const char* name_of_bound(Bound bound) {
+    switch (bound) {
+        case Bound::exact: return "exact";
+        case Bound::at_most: return "at_most";
+        case Bound::at_least: return "at_least";
+    }
+    return "";
+}
+
+struct MeasuredColumn {
+    const char* name;
+    const char* unit;
+    std::optional<Measured> Reading::*member;
+};
+constexpr MeasuredColumn measured_columns[] = {
+    {"up", "mv", &Reading::up_mv},         {"down", "mv", &Reading::down_mv},
+    {"left", "ui", &Reading::left_ui},     {"right", "ui", &Reading::right_ui},
+    {"height", "mv", &Reading::height_mv}, {"width", "ui", &Reading::width_ui}};
+
+std::string csv_header(const RunView& view) {
+    std::string out = "run,board,simulated,lane,ordinal,stage,time,condition";
+    for (const Dimension& dimension : view.space.dimensions()) {
+        out += "," + csv_text(dimension.name + "_code");
+    }
+    out += ",status,error_ratio,error_definition,basis";
+    for (const MeasuredColumn& column : measured_columns) {
+        const std::string name = column.name;
+        const std::string unit = column.unit;
+        out += "," + name + "_" + unit + "," + name + "_se_" + unit + "," + name + "_bound";
+    }
+    return out + ",bit_count,cost_s,score,why\n";
+}
+
+std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRecord& record) {
+    const Manifest& manifest = view.manifest;
+    const Reading& reading = record.reading;
+    std::string out = manifest.run + "," + csv_text(manifest.board) + "," +
+                      (manifest.identity.simulated ? "true" : "false") + "," +
+                      std::to_string(lane) + "," + std::to_string(record.ordinal) + "," +
+                      name_of(record.stage) + "," + iso8601(record.at_ns, manifest.zone) + "," +
+                      csv_text(manifest.condition);
+    for (const std::int32_t code : reading.codes.value) out += "," + std::to_string(code);
+    out += std::string(",") + name_of(reading.status) + "," + csv_number(reading.error_ratio) +
+           "," + name_of(reading.error_definition) + "," + name_of(reading.basis);
+    for (const MeasuredColumn& column : measured_columns) {
+        const std::optional<Measured>& measured = reading.*column.member;
+        out += measured ? "," + csv_number(measured->value) + "," +
+                              csv_number(measured->std_error) + "," + name_of_bound(measured->bound)
+                        : std::string(",,,");
+    }
+    return out + "," + std::to_string(reading.bit_count) + "," + csv_number(reading.cost_s) + "," +
+           csv_number(score_of(reading, view.recipe.required).value) + "," + csv_text(record.why) +
+           "\n";
+}
+
+// One line of `writes`.
+std::string write_line(std::uint16_t lane, const RegisterDescription& reg,
+                       const FieldDescription& field, const RegisterMapDescription& map,
+                       std::uint32_t value, const std::string& comment) {
+    const std::uint32_t address =
+        reg.per_lane ? map.lane_base + lane * map.lane_stride + reg.address : reg.address;
+    const int digits = static_cast<int>(reg.width_bits / 4);
+    return format("%-4u %-12s 0x%04X  0x%0*X  0x%0*X  # ", static_cast<unsigned>(lane),
+                  reg.name.c_str(), address, digits, field.mask(), digits,
+                  (value << field.low_bit) & field.mask()) +
+           comment + "\n";
+}
+
+std::string lane_writes(const RunView& view, std::uint16_t lane, const Codes& codes) {
+    std::string out;
+    const RegisterMapDescription& map = view.board.map;
+    const auto line = [&](const FieldName& name, std::uint32_t value, const std::string& comment) {
+        out += write_line(lane, *map.find(name.reg), *map.find(name), map, value, comment);
+    };
+    for (const Step& step : view.board.apply) {
+        if (std::holds_alternative<WriteCodesStep>(step)) {
+            for (std::size_t i = 0; i < codes.value.size(); ++i) {
+                const DimensionDescription& dimension = view.board.dimensions[i];
+                line(dimension.field, static_cast<std::uint32_t>(codes.value[i]),
+                     dimension.name + " = " + std::to_string(codes.value[i]));
+            }
+        } else if (const auto* write = std::get_if<WriteStep>(&step)) {
+            const auto* literal = std::get_if<std::uint32_t>(&write->value);
+            if (literal != nullptr) {
+                line(write->field, *literal, write->field.text() + " = " + std::to_string(*literal));
+            }
+        } else if (const auto* pause = std::get_if<PauseStep>(&step)) {
+            out += "# lane " + std::to_string(lane) + format(": pause %g ms", pause->pause_ms) + "\n";
+        } else if (const auto* wait = std::get_if<WaitStep>(&step)) {
+            out += "# lane " + std::to_string(lane) + ": wait until " + wait->field.text() +
+                   format(" = %u, at most %g ms", wait->equals, wait->timeout_ms) + "\n";
+        }
+    }
+    return out;
+}
+
+}  // namespace
+
+std::string run_table(const RunView& view, bool colour) {
+    std::string codes_head;
+    for (const Dimension& dimension : view.space.dimensions()) {
+        codes_head += (codes_head.empty() ? "" : "/") + dimension.name;
+    }
+    std::string out = format("%4s  %-9s %-9s %-13s %6s %6s  %5s %5s %-10s %4s\n", "lane", "verdict",
+                             "outcome", codes_head.substr(0, 13).c_str(), "height", "width", "score",
+                             "score", "95 %", "read");
+    out += format("%4s  %-9s %-9s %-13s %6s %6s  %5s %5s %-10s %4s\n", "", "", "", "", "mV", "UI",
+                  "before", "after", "limits", "ings");
+    for (const LaneResult& lane : lane_results(view)) {
+        out += format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
+               format(" %-9s %-13s %6s %6s %6s %5s %-10s %4zu\n",
+                      lane.outcome ? name_of(*lane.outcome) : "-",
+                      lane.decided ? codes_text(view.space, *lane.decided, '/').c_str() : "-",
+                      number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
+                      number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
+                      score_text(lane.before).c_str(), score_text(lane.after).c_str(),
+                      limits_text(lane.after).c_str(), lane.reading_count);
+    }
+    return out;
+}
+
+std::string run_account(const RunView& view, bool colour) {
+    std::string out = head_of(view) + "\n" + run_table(view, colour) + "\n";
+    for (const LaneResult& lane : lane_results(view)) {
+        std::string text = "lane " + std::to_string(lane.lane) + ": ";
+        if (lane.former) text += "was " + codes_text(view.space, *lane.former, ' ') + ". ";
+        text += lane.reason.empty() ? "not finished." : lane.reason;
+        if (lane.judgement && !lane.judgement->reason.empty()) text += " " + lane.judgement->reason;
+        out += wrapped(text, "  ");
+        for (const std::string& note : lane.notes) out += wrapped("- " + note, "    ");
+    }
+    const LinkCounts& link = view.state.link;
+    out += format("\nlink: %llu frames, %llu bad, %llu retries, %llu reconnects, %llu resets",
+                  static_cast<unsigned long long>(link.frames),
+                  static_cast<unsigned long long>(link.bad_frames),
+                  static_cast<unsigned long long>(link.retries),
+                  static_cast<unsigned long long>(link.reconnects),
+                  static_cast<unsigned long long>(link.resets)) +
+           format("; wall time %.1f s\n", view.state.wall_s);
+    if (view.state.ended && !view.state.ended->reason.empty()) {
+        out += wrapped("ended: " + view.state.ended->reason, "");
+    }
+    return out;
+}
+
+std::string runs_table(const std::vector<RunView>& runs) {
+    std::string out = format("%-24s %-11s %-12s %-14s %s\n", "run", "status", "board", "recipe",
+                             "lanes that meet");
+    for (const RunView& view : runs) {
+        std::size_t meets = 0;
+        const std::vector<LaneResult> lanes = lane_results(view);
+        for (const LaneResult& lane : lanes) {
+            if (lane.judgement && lane.judgement->verdict == Verdict::meets) ++meets;
+        }
+        out += format("%-24s %-11s %-12.12s %-14.14s %zu of %zu%s\n", view.manifest.run.c_str(),
+                      run_status(view.state).c_str(), view.manifest.board.c_str(),
+                      view.manifest.recipe.c_str(), meets, lanes.size(),
+                      view.manifest.identity.simulated ? " (sim.)" : "");
+    }
+    return out;
+}
+
+std::string readings_csv(const RunView& view) {
+    std::string out = csv_header(view);
+    for (const auto& [lane, state] : view.state.lanes) {
+        for (const LaneReadingRecord& record : state.readings) out += csv_row(view, lane, record);
+    }
+    return out;
+}
+
+std::string register_writes(const RunView& view) {
+    std::string lines;
+    for (const LaneResult& lane : lane_results(view)) {
+        if (lane.decided && lane.outcome && *lane.outcome != LaneOutcome::failed) {
+            lines += lane_writes(view, lane.lane, *lane.decided);
+        }
+    }
+    if (lines.empty()) {
+        throw StoreError("run " + view.manifest.run + " has no lane with decided codes to write");
+    }
+    std::string head = "# run " + view.manifest.run + ", board " + view.manifest.board + "\n";
+    if (view.manifest.identity.simulated) head += "# SIMULATED BOARD: proves nothing about silicon\n";
+    return head + "# lane register    address mask    value\n" + lines;
+}
+
+}  // namespace lanewright

@@ -1,0 +1,28 @@
+#pragma once
+// Purpose:   a run as text for people and as files for other programs: table, CSV, register writes.
+// Ownership: values only.
+// Threads:   no shared state.
+
+#include <string>
+
+#include "daemon/views/lane_result.hpp"
+
+namespace lanewright {
+
+// At most 80 columns; `colour` adds terminal escapes to the verdicts.
+std::string run_table(const RunView& view, bool colour);
+
+// All that `show` prints: head, table, and each lane's reason and notes.
+std::string run_account(const RunView& view, bool colour);
+
+// One line for each run, newest last, at most 80 columns.
+std::string runs_table(const std::vector<RunView>& runs);
+
+// One row a reading; units in the header's names; times in ISO 8601 with offset.
+std::string readings_csv(const RunView& view);
+
+// The writes that put the run's codes, in the order the board file declares: lane, register,
+// address, mask and value in hex, comment. Throws StoreError where no lane has decided codes.
+std::string register_writes(const RunView& view);
+
+}  // namespace lanewright

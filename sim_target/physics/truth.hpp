@@ -1,0 +1,79 @@
+#pragma once
+// Purpose:   the oracle: the noise-free margin of any codes of a lane, and the best codes. For tests
+//            and benchmarks, and for what the simulated board's monitor latches. No strategy can
+//            reach it: it is not on any wire.
+// Ownership: an Oracle owns the lane's tables (some 2 MB) and keeps nothing of the target file.
+// Threads:   const calls may run at the same time; each thread has its own work memory.
+
+#include <cstdint>
+#include <memory>
+#include <span>
+#include <string>
+#include <vector>
+
+#include "sim_target/physics/eye.hpp"
+#include "sim_target/target_file.hpp"
+
+namespace lanewright::sim {
+
+class Oracle {
+  public:
+    // lane from 0, below target.lanes.size(). Throws BadData for a Touchstone file that cannot be
+    // used.
+    Oracle(const TargetFile& target, int lane);
+    ~Oracle();
+    Oracle(Oracle&&) noexcept;
+    Oracle& operator=(Oracle&&) noexcept;
+
+    // Codes in the order r1, c1, r2, c2, each inside its bank, else std::out_of_range; error_ratio in
+    // (0, 0.1], else std::invalid_argument.
+    Margins margins(const std::vector<int>& codes, double error_ratio) const;
+    double error_ratio_at(const std::vector<int>& codes, double phase_ui, double offset_mv) const;
+    double screening_score(const std::vector<int>& codes, const Required& required) const;
+    // One window of the response to a single +1 symbol, differential millivolts.
+    std::vector<double> pulse_mv(const std::vector<int>& codes) const;
+
+    int lane() const;
+    const LatchedMonitor& monitor() const;
+    const Decision& decision() const;
+    std::vector<int> code_counts() const;
+    std::size_t combinations() const;
+    std::vector<int> codes_at(std::size_t index) const;  // the last dimension moves fastest
+    // Loss of the channel between matched ends at half the bit rate.
+    double nyquist_loss_db() const;
+    // What the user must know of a channel known only between two frequencies; empty for a line.
+    const std::string& channel_note() const;
+
+  private:
+    struct Parts;
+    std::unique_ptr<const Parts> parts_;
+};
+
+struct CodesScore {
+    std::vector<int> codes;
+    Margins margins;
+    double score = 0;
+};
+
+// Every combination, in the order of codes_at(). The result does not depend on `threads` (from 1).
+std::vector<CodesScore> all_codes(const Oracle& oracle, const Required& required, unsigned threads);
+// Screens all by peak distortion with noise, then evaluates the best `share` in full. Of equals the
+// first in the order of codes_at().
+CodesScore best_codes(const Oracle& oracle, const Required& required, unsigned threads,
+                      double share = 0.02);
+
+// What the chip's monitor would latch, in its steps. Closed or without lock: all zero.
+struct LatchedEdges {
+    int up = 0, down = 0, left = 0, right = 0;
+    bool closed = false;
+    bool locked = false;
+};
+
+// The true edges plus Gaussian noise, rounded to the nearest step and held inside the counters.
+// A dwell that cannot show the error ratio latches the edge of 1/dwell_bits instead (0: no limit).
+// The draw is keyed by (seed, lane, ordinal, codes, edge) and by nothing else.
+LatchedEdges latched_reading(const Oracle& oracle, const std::vector<int>& codes,
+                             double error_ratio, std::uint64_t dwell_bits, std::uint64_t seed,
+                             int lane, std::uint64_t ordinal);
+
+}  // namespace lanewright::sim
