@@ -182,6 +182,7 @@ void read_noise(const Object& from, TargetFile& to) {
         from.number_or("input_nv_per_root_hz", 0, {.at_least = 0, .at_most = 1e4}) * 1e-9;
     to.noise.temperature_k = from.number_or("temperature_k", 300, {.at_least = 1, .at_most = 1000});
     to.sampler_noise_mv = from.number("sampler_mv", {.at_least = 0.01, .at_most = 1000});
+    to.sampler_jitter_ui = from.number_or("jitter_ui", 0, {.at_least = 0, .at_most = 0.1});
     from.finish();
 }
 

@@ -64,6 +64,7 @@ struct TargetFile {
     Receiver receiver;
     Noise noise;
     double sampler_noise_mv = 1;
+    double sampler_jitter_ui = 0;  // random, rms
     Spread spread;
     LatchedMonitor monitor;
     Required required;  // what `truth` scores by where the command line names nothing

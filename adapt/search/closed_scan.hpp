@@ -13,10 +13,11 @@
 
 namespace lanewright {
 
-// At most `count` different allowed codes, none equal to `present`, the same on every call: Halton's
-// sequence (Numer. Math. 2, 84-90, 1960) over the ranges of the dimensions. Where the tables are
-// known, codes that peak come before those that don't: a channel closes an eye by loss that rises
-// with frequency, and only peaking opens it. A space of few codes is listed whole, in that order.
+// At most `count` different allowed codes, none equal to `present`, the same on every call:
+// Halton's sequence (Numer. Math. 2, 84-90, 1960) over the ranges of the dimensions. Where the
+// tables are known, codes that peak come before those that don't: a channel closes an eye by loss
+// that rises with frequency, and only peaking opens it. A space of few codes is listed whole, in
+// that order.
 std::vector<Codes> closed_scan(const CodeSpace& space, const Codes& present, std::size_t count);
 
 // The allowed codes closest to these (sum of the distances in shares of each range), which may be

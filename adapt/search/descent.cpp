@@ -55,8 +55,8 @@ class Descent {
         std::vector<Codes> neighbours;
         for (const int direction : {+1, -1}) {
             auto codes = moves_.step(here_, axis, direction, level);
-            if (codes && std::find(neighbours.begin(), neighbours.end(), *codes) ==
-                             neighbours.end()) {
+            if (codes &&
+                std::find(neighbours.begin(), neighbours.end(), *codes) == neighbours.end()) {
                 neighbours.push_back(std::move(*codes));
             }
         }
@@ -106,8 +106,9 @@ class DescentSearch : public StagedSearch {
 
     std::vector<std::string> search_notes() const override {
         if (!fell_back_) return {};
-        return {"the element tables of the four banks are not all known: raw codes were stepped "
-                "instead of the response"};
+        return {
+            "the element tables of the four banks are not all known: raw codes were stepped "
+            "instead of the response"};
     }
 
   private:

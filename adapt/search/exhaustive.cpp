@@ -114,7 +114,8 @@ Grid make_grid(const CodeSpace& space, std::uint32_t stride, std::uint64_t most)
         const auto& dimension = space.dimensions()[i];
         const std::int64_t count = std::int64_t{dimension.highest} - dimension.lowest + 1;
         const auto number = static_cast<std::int64_t>(points[i]);
-        const std::int64_t margin = std::max<std::int64_t>(count - 1 - (number - 1) * stride, 0) / 2;
+        const std::int64_t margin =
+            std::max<std::int64_t>(count - 1 - (number - 1) * stride, 0) / 2;
         auto& codes = grid.codes.emplace_back();
         for (std::int64_t k = 0; k < number; ++k) {
             const std::int64_t offset =

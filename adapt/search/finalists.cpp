@@ -38,8 +38,7 @@ std::vector<Codes> finalists(const LaneProblem& problem, const Ledger& ledger, s
         const auto place = static_cast<std::size_t>(present - chosen.begin());
         if (place >= seats && seats >= 2) {
             chosen.erase(present);
-            chosen.insert(chosen.begin() + static_cast<std::ptrdiff_t>(seats) - 1,
-                          problem.present);
+            chosen.insert(chosen.begin() + static_cast<std::ptrdiff_t>(seats) - 1, problem.present);
         }
     }
     if (chosen.size() > seats) chosen.resize(seats);
@@ -89,9 +88,9 @@ std::string described(const LaneProblem& problem, const Standing& standing) {
     if (standing.score.bound == Bound::at_least) text += "at least ";
     text += fixed(standing.score.value, 3) + " (95 % " + fixed(standing.score.low, 3) + " to " +
             fixed(standing.score.high, 3) + ", ";
-    return text + (standing.again ? "mean of " + std::to_string(standing.readings) +
-                                        " repeated readings)"
-                                  : std::string("a single reading)"));
+    return text + (standing.again
+                       ? "mean of " + std::to_string(standing.readings) + " repeated readings)"
+                       : std::string("a single reading)"));
 }
 
 Choice keep(const LaneProblem& problem, std::string reason) {
@@ -137,8 +136,8 @@ Choice choose(const LaneProblem& problem, const Ledger& ledger) {
             return a.score.value < b.score.value;  // the first of equals: the better ranked
         });
     if (best.codes == problem.present) {
-        return keep(problem, "the present codes are the best that were read: " +
-                                 described(problem, best));
+        return keep(problem,
+                    "the present codes are the best that were read: " + described(problem, best));
     }
     const bool rival = problem.space->allows(problem.present) && ledger.was_read(problem.present);
     if (!problem.allow_unchanged || !rival) {
@@ -149,13 +148,18 @@ Choice choose(const LaneProblem& problem, const Ledger& ledger) {
     const std::string both =
         described(problem, best) + " against the present " + described(problem, present);
     if (!(z > significant_z)) {
-        return keep(problem, "nothing is significantly better than the present codes (one-sided "
-                             "normal test at 5 %): best " + both);
+        return keep(problem,
+                    "nothing is significantly better than the present codes (one-sided "
+                    "normal test at 5 %): best " +
+                        both);
+    }
+    if (present.score.status == Status::no_lock || present.score.bound == Bound::at_most) {
+        return {best.codes, false, "open, where the present codes are not: " + both};
     }
     const std::string by = std::isfinite(z)
                                ? "better by " + fixed(z, 1) +
                                      " standard errors (one-sided normal test at 5 %: 1.645): "
-                               : std::string("better beyond doubt: ");
+                               : std::string("better, and no spread is known: ");
     return {best.codes, false, by + both};
 }
 

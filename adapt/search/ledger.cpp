@@ -2,7 +2,6 @@
 
 #include <algorithm>
 #include <cmath>
-#include <tuple>
 
 namespace lanewright {
 namespace {
@@ -36,7 +35,6 @@ void Ledger::add(const Codes& asked, const Reading& reading) {
     auto& entry = entries_[reading.codes];
     if (entry.readings.empty()) {
         entry.first = merit_of(reading, problem_->required);
-        entry.ordinal = entries_.size() - 1;
     }
     entry.readings.push_back(reading);
 }
@@ -50,25 +48,25 @@ const Ledger::Entry* Ledger::find(const Codes& asked) const {
 }
 
 std::vector<Codes> Ledger::ranking() const {
-    std::vector<std::pair<const Codes*, const Entry*>> order;
-    for (const auto& [codes, entry] : entries_) {
-        if (problem_->space->allows(codes)) order.emplace_back(&codes, &entry);
-    }
-    const auto key = [&](const auto& each) {
-        return std::tuple(codes_changed(*each.first, problem_->present), *each.first);
+    struct Candidate {
+        const Codes* codes;
+        const Merit* merit;
+        std::size_t changed;
     };
-    std::sort(order.begin(), order.end(), [&](const auto& a, const auto& b) {
-        const auto merits = a.second->first <=> b.second->first;
-        return merits != 0 ? merits > 0 : key(a) < key(b);
+    std::vector<Candidate> order;
+    for (const auto& [codes, entry] : entries_) {
+        if (!problem_->space->allows(codes)) continue;
+        order.push_back({&codes, &entry.first, codes_changed(codes, problem_->present)});
+    }
+    std::sort(order.begin(), order.end(), [](const Candidate& a, const Candidate& b) {
+        if (*a.merit != *b.merit) return *a.merit > *b.merit;
+        if (a.changed != b.changed) return a.changed < b.changed;
+        return *a.codes < *b.codes;
     });
     std::vector<Codes> ranking;
     ranking.reserve(order.size());
-    for (const auto& each : order) ranking.push_back(*each.first);
+    for (const auto& each : order) ranking.push_back(*each.codes);
     return ranking;
-}
-
-bool Ledger::limited() const {
-    return problem_->budget.standard_readings > 0 || problem_->budget.bench_s > 0;
 }
 
 std::size_t Ledger::affordable() const {

@@ -20,7 +20,6 @@ class Ledger {
     struct Entry {
         std::vector<Reading> readings;  // in the order taken; never empty
         Merit first;                    // of the first reading: what a search steers by
-        std::size_t ordinal = 0;        // how many codes had been read before these
     };
 
     explicit Ledger(const LaneProblem& problem) : problem_(&problem) {}
@@ -40,7 +39,6 @@ class Ledger {
 
     // How many more search readings of this problem the budget holds; a large number if unlimited.
     std::size_t affordable() const;
-    bool limited() const;
 
     std::uint32_t reading_count() const { return reading_count_; }
     double standard_readings() const { return standard_readings_; }

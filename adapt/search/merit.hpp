@@ -3,9 +3,10 @@
 // Ownership: values only.
 // Threads:   any.
 //
-// The score alone is too coarse to steer by: a monitor's steps make many neighbours equal, and every
-// closed eye scores 0. Equal scores are told apart by how wide the other sides are, with the narrow
-// ones counting most (a harmonic mean), which also gives a slope where only some edges are closed.
+// The score alone is too coarse to steer by: a monitor's steps make many neighbours equal, and
+// every closed eye scores 0. Equal scores are told apart by how wide the other sides are, with the
+// narrow ones counting most (a harmonic mean), which also gives a slope where only some edges are
+// closed.
 
 #include "adapt/search/procedure.hpp"
 #include "adapt/values/values.hpp"

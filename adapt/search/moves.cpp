@@ -33,8 +33,10 @@ std::optional<Codes> code_step(const CodeSpace& space, const Codes& from, std::s
                                int direction, std::size_t level) {
     const auto& bank = space.dimensions()[dimension];
     const std::int64_t here = from.value[dimension];
-    const std::int64_t size = std::max<std::int64_t>(first_step(bank) >> std::min<std::size_t>(level, 40), 1);
-    std::int64_t there = std::clamp<std::int64_t>(here + direction * size, bank.lowest, bank.highest);
+    const std::int64_t size =
+        std::max<std::int64_t>(first_step(bank) >> std::min<std::size_t>(level, 40), 1);
+    std::int64_t there =
+        std::clamp<std::int64_t>(here + direction * size, bank.lowest, bank.highest);
     Codes codes = from;
     for (; there != here; there -= direction) {
         codes.value[dimension] = static_cast<std::int32_t>(there);
@@ -88,7 +90,9 @@ constexpr double least_progress = 0.25;
 // An attenuation of 0 dB would need an element of no size.
 constexpr double closest_to_0_db = -0.01;
 
-double db_of(double value) { return 20 * std::log10(value); }
+double db_of(double value) {
+    return 20 * std::log10(value);
+}
 
 Point point_of(const Response& response) {
     return {response.dc_db, response.hf_db, db_of(response.zero_ghz), db_of(response.level_ohm)};
@@ -246,10 +250,10 @@ std::unique_ptr<Moves> make_response_moves(const CodeSpace& space) {
         const auto dimension = space.find(part);
         if (!dimension) return nullptr;
         const auto& bank = space.dimensions()[*dimension];
-        const bool whole =
-            static_cast<std::int64_t>(bank.nominal.size()) == range_of(bank) + 1 &&
-            std::all_of(bank.nominal.begin(), bank.nominal.end(),
-                        [](double value) { return value > 0 && std::isfinite(value); });
+        const bool whole = static_cast<std::int64_t>(bank.nominal.size()) == range_of(bank) + 1 &&
+                           std::all_of(bank.nominal.begin(), bank.nominal.end(), [](double value) {
+                               return value > 0 && std::isfinite(value);
+                           });
         if (!whole) return nullptr;
     }
     return std::make_unique<ResponseMoves>(space);

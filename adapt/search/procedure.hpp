@@ -59,10 +59,10 @@ struct LaneProblem {
 
 struct Decision {
     Codes codes;
-    bool unchanged = false;           // the present codes are kept
-    std::string reason;               // one or two sentences for people
-    std::vector<std::string> notes;   // what else a reader of the log should know
-    std::uint32_t reading_count = 0;  // readings observed
+    bool unchanged = false;                     // the present codes are kept
+    std::string reason;                         // one or two sentences for people
+    std::vector<std::string> notes;             // what else a reader of the log should know
+    std::uint32_t reading_count = 0;            // readings observed
     double standard_readings = 0, bench_s = 0;  // charged
 };
 

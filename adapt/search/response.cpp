@@ -11,11 +11,19 @@ namespace {
 constexpr double two_pi = 2 * std::numbers::pi;
 constexpr double hz_per_ghz = 1e9;
 
-double decibel(double ratio) { return 20 * std::log10(ratio); }
-double ratio_of(double db) { return std::pow(10.0, db / 20); }
-double corner_ghz(double tau_s) { return 1 / (two_pi * tau_s) / hz_per_ghz; }
+double decibel(double ratio) {
+    return 20 * std::log10(ratio);
+}
+double ratio_of(double db) {
+    return std::pow(10.0, db / 20);
+}
+double corner_ghz(double tau_s) {
+    return 1 / (two_pi * tau_s) / hz_per_ghz;
+}
 
-bool usable(double value) { return value > 0 && std::isfinite(value); }
+bool usable(double value) {
+    return value > 0 && std::isfinite(value);
+}
 
 bool usable(const Network& network) {
     return usable(network.r1_ohm) && usable(network.c1_farad) && usable(network.r2_ohm) &&
@@ -30,7 +38,9 @@ bool usable(const Surroundings& around) {
     return true;
 }
 
-double parallel(double a, double b) { return a * b / (a + b); }
+double parallel(double a, double b) {
+    return a * b / (a + b);
+}
 
 // Admittance of a capacitor with a resistor in series, at s = j omega.
 std::complex<double> branch(std::complex<double> s, double farad, double series_ohm) {
@@ -88,8 +98,8 @@ std::optional<std::complex<double>> transfer(const Network& network, const Surro
     if (!usable(network) || !usable(around)) return std::nullopt;
     if (!(frequency_hz >= 0) || !std::isfinite(frequency_hz)) return std::nullopt;
     const std::complex<double> s(0, two_pi * frequency_hz);
-    const auto y1 = 1 / (network.r1_ohm + around.on_r1_ohm) +
-                    branch(s, network.c1_farad, around.on_c1_ohm);
+    const auto y1 =
+        1 / (network.r1_ohm + around.on_r1_ohm) + branch(s, network.c1_farad, around.on_c1_ohm);
     const auto y2 = 1 / (network.r2_ohm + around.on_r2_ohm) +
                     branch(s, network.c2_farad, around.on_c2_ohm) + s * around.load_farad +
                     around.load_siemens;

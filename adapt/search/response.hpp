@@ -47,7 +47,7 @@ std::optional<double> step_response(const Network& network, double time_s);
 struct Surroundings {
     double source_ohm = 0;
     double load_farad = 0;
-    double load_siemens = 0;  // 1 / load resistance
+    double load_siemens = 0;                                            // 1 / load resistance
     double on_r1_ohm = 0, on_c1_ohm = 0, on_r2_ohm = 0, on_c2_ohm = 0;  // in series with each
 };
 
@@ -58,8 +58,8 @@ std::optional<std::complex<double>> transfer(const Network& network, const Surro
 // Poles and peak with source and load but without switch resistance: one zero, two real poles.
 struct LoadedResponse {
     double dc_db = 0, zero_ghz = 0, low_pole_ghz = 0;
-    double high_pole_ghz = 0;          // infinite without source resistance
-    std::optional<double> peak_ghz;    // of the magnitude; empty: no peak at a finite frequency
+    double high_pole_ghz = 0;        // infinite without source resistance
+    std::optional<double> peak_ghz;  // of the magnitude; empty: no peak at a finite frequency
     std::optional<double> peak_db;
 };
 std::optional<LoadedResponse> loaded_response(const Network& network, const Surroundings& around);

@@ -21,7 +21,7 @@ struct Side {
 
 void add_side(std::vector<Side>& sides, const std::optional<Measured>& edge, double factor) {
     if (!std::isfinite(factor)) return;  // nothing is required in this direction
-    if (!edge) {
+    if (!edge || std::isnan(edge->value) || std::isnan(edge->std_error)) {
         sides.push_back({{0, infinity, Bound::exact}, -infinity});
         return;
     }
@@ -69,8 +69,9 @@ Bound joint_bound(const std::vector<Measured>& edges) {
         return std::any_of(edges.begin(), edges.end(),
                            [&](const Measured& each) { return each.bound == bound; });
     };
-    return any(Bound::at_most) ? Bound::at_most : any(Bound::at_least) ? Bound::at_least
-                                                                       : Bound::exact;
+    return any(Bound::at_most)    ? Bound::at_most
+           : any(Bound::at_least) ? Bound::at_least
+                                  : Bound::exact;
 }
 
 // Weighted by 1/variance where every edge has one, plainly otherwise.
@@ -88,9 +89,9 @@ double weighted_mean(const std::vector<Measured>& edges, double plain_mean) {
 Measured join(const std::vector<Measured>& edges, double step, double declared_sigma) {
     if (edges.size() == 1) return edges.front();
     const Bound bound = joint_bound(edges);
-    const auto extreme = std::minmax_element(
-        edges.begin(), edges.end(),
-        [](const Measured& a, const Measured& b) { return a.value < b.value; });
+    const auto extreme =
+        std::minmax_element(edges.begin(), edges.end(),
+                            [](const Measured& a, const Measured& b) { return a.value < b.value; });
     const bool all_bounds = std::all_of(edges.begin(), edges.end(),
                                         [&](const Measured& each) { return each.bound == bound; });
     if (all_bounds && bound == Bound::at_most) return *extreme.second;
@@ -98,9 +99,9 @@ Measured join(const std::vector<Measured>& edges, double step, double declared_s
 
     const Spread spread = spread_of(edges);
     const auto other = bound == Bound::at_most ? Bound::at_least : Bound::at_most;
-    if (bound != Bound::exact &&
-        std::any_of(edges.begin(), edges.end(),
-                    [&](const Measured& each) { return each.bound == other; })) {
+    if (bound != Bound::exact && std::any_of(edges.begin(), edges.end(), [&](const Measured& each) {
+            return each.bound == other;
+        })) {
         return {spread.mean, infinity, Bound::exact};
     }
     double inverse_variances = 0;
@@ -140,15 +141,17 @@ Status joint_status(const Reading& mean) {
 
 double lasting_variance(double step, double sigma) {
     if (!(step > 0)) return 0;
-    if (!(sigma > 0)) return step * step / 12;
-    double sum = 0;
-    for (int k = 1; k <= 2000; ++k) {
-        const double angle = 2 * std::numbers::pi * k * sigma / step;
-        const double term = std::exp(-angle * angle) / (static_cast<double>(k) * k);
-        sum += term;
-        if (term < 1e-12 * sum || term == 0) break;
+    constexpr double pi = std::numbers::pi;
+    const double turns = 2 * pi * std::max(sigma, 0.0) / step;
+    const double c = turns * turns;
+    double sum = 0;  // of exp(-c k^2) / k^2
+    if (c < 0.4) {
+        // The series converges too slowly here; its limit for small c, to better than 1e-10.
+        sum = pi * pi / 6 - std::sqrt(pi * c) + c / 2;
+    } else {
+        for (int k = 1; k <= 10; ++k) sum += std::exp(-c * k * k) / (k * k);
     }
-    return std::min(step * step / 12, step * step * sum / (2 * std::numbers::pi * std::numbers::pi));
+    return step * step * sum / (2 * pi * pi);
 }
 
 Score score_of(const Reading& reading, const Required& required) {
@@ -160,7 +163,7 @@ Score score_of(const Reading& reading, const Required& required) {
     if (reading.status == Status::void_reading) return score;
 
     const auto sides = sides_of(reading, required);
-    score.value = score.low = infinity;
+    if (!sides.empty()) score.value = score.low = infinity;
     const double z_low = normal_q(outside_each_limit);
     const double z_high =
         normal_q(outside_each_limit / static_cast<double>(std::max<std::size_t>(sides.size(), 1)));

@@ -14,8 +14,8 @@
 //   high = the smallest upper limit of a side, each at 2.5 % / number of sides (Bonferroni; 2.50
 //          standard errors for four sides), as any one of them could be too low by chance.
 // A side known only as "at most" (a closed latched eye) counts as 0, its lower limit is unknown
-// (-infinity) and its upper limit starts at the bound. A side known only as "at least" counts as its
-// bound and has no upper limit.
+// (-infinity) and its upper limit starts at the bound. A side known only as "at least" counts as
+// its bound and has no upper limit.
 
 #include <span>
 
@@ -26,15 +26,16 @@ namespace lanewright {
 
 struct Score {
     double value = 0;
-    double low = 0, high = 0;     // may be infinite
-    double std_error = 0;         // of the side that sets the value
-    Bound bound = Bound::exact;   // of that side
+    double low = 0, high = 0;    // may be infinite
+    double std_error = 0;        // of the side that sets the value
+    Bound bound = Bound::exact;  // of that side
     Basis basis = Basis::counted;
     Status status = Status::void_reading;
 };
 
 // No lock: value and low -infinity, high 0 (or that of the edges, in a mean that has some).
-// Void, or an edge missing that the requirement needs: value and low -infinity, high +infinity.
+// Void, an edge missing (or not a number) that the requirement needs, or nothing required at all:
+// value and low -infinity, high +infinity.
 Score score_of(const Reading& reading, const Required& required);
 
 // Several readings of the same codes as one, edge by edge. `noise` tells how much of the standard

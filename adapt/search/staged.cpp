@@ -56,8 +56,10 @@ StagedSearch::Plan StagedSearch::plan() const {
     if (start_.value.empty()) return {{}, {}, "finished", false};
     if (!ledger_.was_read(start_)) {
         if (ledger_.affordable() == 0) return {{}, {}, "finished", true};
-        return {{start_}, start_ == problem_.present ? "present codes" : "nearest allowed codes",
-                "present", false};
+        return {{start_},
+                start_ == problem_.present ? "present codes" : "nearest allowed codes",
+                "present",
+                false};
     }
     const Scan scanned = scan();
     if (!scanned.batch.empty()) return trimmed(scanned.batch, "closed eye: scan", "scan");
@@ -145,8 +147,10 @@ std::vector<std::string> StagedSearch::notes(const Codes& decided) const {
     }
     if (!ledger_.was_read(start_)) return notes;
     if (const Scan scanned = scan(); scanned.used) {
-        notes.push_back("the eye was closed at the start: up to " +
-                        std::to_string(scanned.looked_at) +
+        const auto end = scan_order_.begin() + static_cast<std::ptrdiff_t>(scanned.looked_at);
+        const auto count = std::count_if(
+            scan_order_.begin(), end, [&](const Codes& codes) { return ledger_.was_read(codes); });
+        notes.push_back("the eye was closed at the start: " + std::to_string(count) +
                         " codes spread over the space were read to find one that opens it");
     }
     if (ledger_.asked_differently() > 0) {
@@ -169,6 +173,8 @@ std::vector<std::string> StagedSearch::notes(const Codes& decided) const {
     return notes;
 }
 
-Lesson StagedSearch::lesson() const { return {problem_.lane, {}}; }
+Lesson StagedSearch::lesson() const {
+    return {problem_.lane, {}};
+}
 
 }  // namespace lanewright

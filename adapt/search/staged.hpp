@@ -66,8 +66,8 @@ class StagedSearch : public Procedure {
     const CodeSpace no_space_;
     LaneProblem problem_;
     Ledger ledger_;
-    Codes start_;                   // present codes, or the nearest allowed ones; may be empty
-    std::size_t total_room_ = 0;    // readings the whole budget holds
+    Codes start_;                    // present codes, or the nearest allowed ones; may be empty
+    std::size_t total_room_ = 0;     // readings the whole budget holds
     std::vector<Codes> scan_order_;  // empty until a scan is needed
     std::vector<Codes> pending_;
     std::string pending_why_;

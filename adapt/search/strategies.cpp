@@ -18,7 +18,9 @@ constexpr std::array entries = {
 
 }  // namespace
 
-std::span<const StrategyEntry> strategies() { return entries; }
+std::span<const StrategyEntry> strategies() {
+    return entries;
+}
 
 const StrategyEntry* find_strategy(std::string_view name) {
     const auto found = std::find_if(entries.begin(), entries.end(),

@@ -9,9 +9,8 @@ namespace {
 
 std::string written(double value, std::chars_format format, int digits) {
     std::array<char, 400> buffer{};  // the largest double has 309 digits before the point
-    const auto end =
-        std::to_chars(buffer.data(), buffer.data() + buffer.size(), value, format,
-                      std::clamp(digits, 0, 40));
+    const auto end = std::to_chars(buffer.data(), buffer.data() + buffer.size(), value, format,
+                                   std::clamp(digits, 0, 40));
     return std::string(buffer.data(), end.ptr);
 }
 

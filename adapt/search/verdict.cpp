@@ -1,7 +1,7 @@
 #include "adapt/search/verdict.hpp"
 
 #include <algorithm>
-#include <cmath>
+#include <limits>
 #include <vector>
 
 #include "adapt/search/text.hpp"
@@ -9,7 +9,9 @@
 namespace lanewright {
 namespace {
 
-bool decided(const Score& score) { return score.low >= 1 || score.high < 1; }
+bool decided(const Score& score) {
+    return score.low >= 1 || score.high < 1;
+}
 
 // The readings as if they had been taken `times` over, each copy weighing the same: the mean stays
 // and its passing variance shrinks.
@@ -41,13 +43,60 @@ std::optional<double> deciding_time_s(std::span<const Reading> readings, const R
     return static_cast<double>(enough - 1) * cost_of_all_s;
 }
 
+struct RatiosRead {
+    double lowest = std::numeric_limits<double>::infinity(), highest = 0;
+};
+
+RatiosRead ratios_of(std::span<const Reading> readings) {
+    RatiosRead ratios;
+    for (const auto& reading : readings) {
+        if (reading.status == Status::void_reading) continue;
+        ratios.lowest = std::min(ratios.lowest, reading.error_ratio);
+        ratios.highest = std::max(ratios.highest, reading.error_ratio);
+    }
+    return ratios;
+}
+
+// The limit is clear of 1; what may still stand against a verdict. Sets verdict and reason.
+void judge_clear(Judgement& judgement, const RatiosRead& ratios, double required_ratio,
+                 bool extrapolated, bool accept_extrapolated, bool no_lock) {
+    constexpr double rounding = 1e-9;
+    const auto& score = judgement.score;
+    const bool passes = score.low >= 1;
+    const bool easier = ratios.highest > required_ratio * (1 + rounding);
+    const bool harder = ratios.lowest < required_ratio * (1 - rounding);
+    if (no_lock && !passes) {
+        judgement.verdict = Verdict::fails;
+        judgement.reason = "the receiver does not hold lock";
+        return;
+    }
+    if (passes ? easier : harder) {
+        judgement.reason = "read at an error ratio of " +
+                           general(passes ? ratios.highest : ratios.lowest, 3) +
+                           ", where this proves nothing at " + general(required_ratio, 3);
+        return;
+    }
+    if (passes && extrapolated && !accept_extrapolated) {
+        judgement.reason = "the margin is extrapolated, which the recipe does not accept as proof";
+        return;
+    }
+    judgement.verdict = passes ? Verdict::meets : Verdict::fails;
+    judgement.reason =
+        passes ? "the lower 95 % limit of the score is " + fixed(score.low, 3)
+               : "the upper 95 % limit of the score, " + fixed(score.high, 3) + ", is below 1";
+    if (extrapolated) judgement.reason += " (extrapolated)";
+}
+
 }  // namespace
 
 const char* name_of(Verdict verdict) {
     switch (verdict) {
-        case Verdict::meets: return "meets";
-        case Verdict::fails: return "fails";
-        case Verdict::undecided: break;
+        case Verdict::meets:
+            return "meets";
+        case Verdict::fails:
+            return "fails";
+        case Verdict::undecided:
+            break;
     }
     return "undecided";
 }
@@ -62,36 +111,18 @@ Judgement judge(std::span<const Reading> readings, const Required& required,
         judgement.reason = "there is no fresh reading to judge by";
         return judgement;
     }
-    if (score.high < 1) {
-        judgement.verdict = Verdict::fails;
-        judgement.reason = mean.status == Status::no_lock && !std::isfinite(score.value)
-                               ? "the receiver does not hold lock"
-                               : "the upper 95 % limit of the score, " + fixed(score.high, 3) + ", is below 1";
-        return judgement;
-    }
-    if (score.low >= 1) {
-        const bool easier = mean.error_ratio > required.error_ratio * (1 + 1e-9);
-        const bool extrapolated = mean.basis == Basis::extrapolated;
-        if (easier) {
-            judgement.reason = "read at an error ratio of " + general(mean.error_ratio, 3) +
-                               ", which proves nothing at " + general(required.error_ratio, 3);
-        } else if (extrapolated && !accept_extrapolated) {
-            judgement.reason =
-                "the margin is extrapolated, which the recipe does not accept as proof";
-        } else {
-            judgement.verdict = Verdict::meets;
-            judgement.reason = "the lower 95 % limit of the score is " + fixed(score.low, 3);
-            if (extrapolated) judgement.reason += "; extrapolated, which the recipe accepts";
-        }
+    if (decided(score)) {
+        judge_clear(judgement, ratios_of(readings), required.error_ratio,
+                    mean.basis == Basis::extrapolated, accept_extrapolated,
+                    mean.status == Status::no_lock);
         return judgement;
     }
     judgement.deciding_s = deciding_time_s(readings, required, noise, mean.cost_s);
     judgement.reason = "1 lies within the 95 % limits of the score, " + fixed(score.low, 3) +
                        " to " + fixed(score.high, 3);
-    judgement.reason += judgement.deciding_s
-                            ? "; about " + general(*judgement.deciding_s, 3) +
-                                  " s more bench time would decide"
-                            : "; more readings of this kind would not decide";
+    judgement.reason += judgement.deciding_s ? "; about " + general(*judgement.deciding_s, 3) +
+                                                   " s more bench time would decide"
+                                             : "; more readings of this kind would not decide";
     return judgement;
 }
 

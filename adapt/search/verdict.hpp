@@ -28,8 +28,9 @@ struct Judgement {
 
 // From fresh readings of one set of codes only: meets if the lower 95 % limit of the score is at
 // least 1, fails if the upper one is below 1, else undecided. An extrapolated score never meets
-// unless `accept_extrapolated`, and the reason then says so; readings at a higher error ratio than
-// the required one never meet either, but may fail. No readings: undecided.
+// unless `accept_extrapolated`, and the reason then says so. Readings at a higher error ratio than
+// the required one can fail but not meet, readings at a lower one can meet but not fail. No
+// readings: undecided.
 Judgement judge(std::span<const Reading> readings, const Required& required,
                 const MonitorNoise& noise, bool accept_extrapolated);
 

@@ -4,8 +4,8 @@
 #include <cmath>
 #include <limits>
 
-#include "adapt/stats/tails.hpp"
 #include "adapt/stats/normal.hpp"
+#include "adapt/stats/tails.hpp"
 
 namespace lanewright {
 namespace {
@@ -19,8 +19,8 @@ template <class Function>
 double crossing(Function increasing, double high) {
     double low = std::numeric_limits<double>::min();
     for (int step = 0; step < 200; ++step) {
-        const double middle = high > 2 * low ? std::sqrt(low) * std::sqrt(high)
-                                             : low + 0.5 * (high - low);
+        const double middle =
+            high > 2 * low ? std::sqrt(low) * std::sqrt(high) : low + 0.5 * (high - low);
         if (!(middle > low) || !(middle < high)) break;
         (increasing(middle) < 0 ? low : high) = middle;
     }
@@ -48,8 +48,8 @@ double gamma_high(double k, double alpha) {
 
 double binomial_high(double events, double trials, double alpha) {
     if (events >= trials) return 1;
-    return crossing(
-        [&](double chance) { return alpha - binomial_at_most(events, trials, chance); }, 1.0);
+    return crossing([&](double chance) { return alpha - binomial_at_most(events, trials, chance); },
+                    1.0);
 }
 
 double binomial_low(double events, double trials, double alpha) {
@@ -75,8 +75,7 @@ Limits stopped_run_limits(std::uint64_t kth_event, double confidence, Sides side
     return {gamma_low(order, alpha), gamma_high(order, alpha)};
 }
 
-Limits binomial_limits(std::uint64_t events, std::uint64_t trials, double confidence,
-                       Sides sides) {
+Limits binomial_limits(std::uint64_t events, std::uint64_t trials, double confidence, Sides sides) {
     const double alpha = outside(confidence, sides);
     if (std::isnan(alpha)) return {alpha, alpha};
     if (trials == 0 || events > trials) return {0, 1};

@@ -23,7 +23,9 @@ double log_density(double x) {
 
 }  // namespace
 
-double normal_tail(double x) { return 0.5 * std::erfc(x / std::numbers::sqrt2); }
+double normal_tail(double x) {
+    return 0.5 * std::erfc(x / std::numbers::sqrt2);
+}
 
 double log_normal_tail(double x) {
     if (x < 10) return std::log(normal_tail(x));

@@ -25,9 +25,9 @@ Random::Random(RandomKey key) : key_(key) {}
 
 std::uint64_t Random::bits() {
     if (used_ + 2 > words_.size()) {
-        words_ = philox4x32({block_++, key_.lane, key_.purpose, key_.ordinal},
-                            {static_cast<std::uint32_t>(key_.seed),
-                             static_cast<std::uint32_t>(key_.seed >> 32)});
+        words_ = philox4x32(
+            {block_++, key_.lane, key_.purpose, key_.ordinal},
+            {static_cast<std::uint32_t>(key_.seed), static_cast<std::uint32_t>(key_.seed >> 32)});
         used_ = 0;
     }
     const std::uint64_t low = words_[used_], high = words_[used_ + 1];
@@ -41,7 +41,9 @@ double Random::uniform() {
     return (static_cast<double>(bits() >> 12) + 0.5) * cell;
 }
 
-double Random::normal() { return -normal_q(uniform()); }
+double Random::normal() {
+    return -normal_q(uniform());
+}
 
 std::uint64_t Random::below(std::uint64_t limit) {
     if (limit == 0) return 0;

@@ -9,7 +9,7 @@ namespace {
 
 constexpr double not_a_number = std::numeric_limits<double>::quiet_NaN();
 constexpr double epsilon = 1e-16;
-constexpr double tiny = 1e-300;  // keeps Lentz's method clear of a division by zero
+constexpr double tiny = 1e-300;        // keeps Lentz's method clear of a division by zero
 constexpr int most_terms = 5'000'000;  // about six standard deviations at a count of 1e11
 constexpr double two_pi = 2.0 * std::numbers::pi;
 

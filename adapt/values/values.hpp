@@ -16,7 +16,9 @@ namespace lanewright {
 enum class Lane : std::uint16_t {};
 enum class Condition : std::uint16_t {};  // a corner; 0 = "as found"
 
-constexpr std::uint16_t number(Lane lane) { return static_cast<std::uint16_t>(lane); }
+constexpr std::uint16_t number(Lane lane) {
+    return static_cast<std::uint16_t>(lane);
+}
 
 // One value for every tuned dimension, in the order of the board file's dimensions.
 struct Codes {
@@ -50,11 +52,11 @@ struct Measured {
 };
 
 enum class Status : std::uint8_t {
-    open,        // all edges found
-    closed,      // no opening at the error ratio asked for
-    no_lock,     // the receiver did not lock with these codes
-    saturated,   // the eye reaches beyond the monitor's range in at least one direction
-    void_reading // not a measurement (reset, lost link): never handed to a strategy
+    open,         // all edges found
+    closed,       // no opening at the error ratio asked for
+    no_lock,      // the receiver did not lock with these codes
+    saturated,    // the eye reaches beyond the monitor's range in at least one direction
+    void_reading  // not a measurement (reset, lost link): never handed to a strategy
 };
 
 // What the monitor compares with. Under `decision`, counts at zero offset prove nothing.
@@ -93,11 +95,11 @@ struct Reading {
     bool centred_assumed = false;
     Basis basis = Basis::counted;
     ErrorDefinition error_definition = ErrorDefinition::pattern;
-    double error_ratio = 0;                      // the ratio at which the edges are stated
-    std::optional<double> centre_error_ratio;    // of a closed eye, where the monitor counts
-    std::vector<Count> counts;                   // raw, where the board has them
-    std::uint64_t bit_count = 0;                 // bits dwelt on in all
-    double cost_s = 0;                           // declared cost, not measured time
+    double error_ratio = 0;                    // the ratio at which the edges are stated
+    std::optional<double> centre_error_ratio;  // of a closed eye, where the monitor counts
+    std::vector<Count> counts;                 // raw, where the board has them
+    std::uint64_t bit_count = 0;               // bits dwelt on in all
+    double cost_s = 0;                         // declared cost, not measured time
 };
 
 // The margin a lane must have; a score of 1.0 just passes.

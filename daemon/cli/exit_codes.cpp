@@ -19,6 +19,7 @@ ExitCode exit_code_of(Cause cause) {
         case Cause::bad_config: return exit_config;
         case Cause::no_permission: return exit_no_permission;
         case Cause::io: return exit_io;
+        case Cause::bad_data:
         case Cause::diverged: return exit_bad_data;
         case Cause::internal: break;
     }

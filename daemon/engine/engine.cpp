@@ -7,7 +7,6 @@
 #include <utility>
 
 #include "drivers/io/task_group.hpp"
-#include "drivers/io/turnstile.hpp"
 
 namespace lanewright {
 
@@ -15,8 +14,6 @@ namespace {
 
 using namespace std::chrono_literals;
 
-// A lane that waits for its monitor this long waits for something that will not come.
-constexpr auto longest_wait_for_monitor = 1h;
 // Writing the final codes is tried again after a reset; more than this is a broken board.
 constexpr int settle_attempts = 4;
 
@@ -51,7 +48,6 @@ class Engine {
     struct LaneJob {
         std::unique_ptr<LaneMachine> machine;
         std::vector<Event> unseen;  // stored, not yet told to the machine
-        std::shared_ptr<Turnstile> monitor;
     };
 
     void make_jobs();
@@ -66,7 +62,8 @@ class Engine {
     Task<void> settle(Lane lane, Settlement settlement, Codes codes);
     Task<void> settle_rest();
     Task<void> append(std::vector<Event> events);
-    Task<void> append(Event event);
+    Task<void> append(Event event);  // name its task before waiting for it: g++ 12.2 destroys
+                                     // aggregate temporaries of a co_await expression twice
     Result<void> note_changed();
     bool keeps_decision(const LaneState& lane) const;
     SavedLane resting(const LaneState& lane) const;
@@ -88,12 +85,6 @@ void Engine::make_jobs() {
         LaneJob& job = jobs_[lane];
         job.machine = std::make_unique<LaneMachine>(
             lane_setup_of(plan_.board, plan_.recipe, Lane{lane}, plan_.manifest.seed));
-    }
-    for (const auto& group : plan_.board.monitor.shared_by) {
-        const auto monitor = std::make_shared<Turnstile>(bench_.time.io());
-        for (const std::uint16_t lane : group) {
-            if (const auto job = jobs_.find(lane); job != jobs_.end()) job->second.monitor = monitor;
-        }
     }
 }
 
@@ -156,9 +147,8 @@ Task<void> Engine::save_lanes() {
         if (!state_.lanes[number_of_lane].saved) {
             auto saved = co_await bench_.reader.save(lane);
             if (!saved) co_return saved.error();
-            if (auto stored = co_await append(LaneSaved{std::move(*saved)}); !stored) {
-                co_return stored.error();
-            }
+            auto storing = append(LaneSaved{std::move(*saved)});
+            if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         }
         const LaneState& known = state_.lanes[number_of_lane];
         if (!known.finished) plan_.note.set(resting(known));
@@ -167,28 +157,14 @@ Task<void> Engine::save_lanes() {
 }
 
 Task<bool> Engine::measure(Lane lane, DoMeasure what) {
-    Turnstile::Pass pass;
-    if (const auto monitor = jobs_.at(number(lane)).monitor) {
-        auto turn = co_await monitor->enter(
-            bench_.time, bench_.time.now() + longest_wait_for_monitor, bench_.stop);
-        if (!turn && turn.error().cause == Cause::stopped) co_return false;
-        if (!turn) co_return turn.error();
-        pass = std::move(*turn);
-    }
-    if (should_stop()) co_return false;
-    if (auto stored =
-            co_await append(Intent{lane, what.ordinal, what.attempt, what.stage, what.request});
-        !stored) {
-        co_return stored.error();
-    }
+    auto intending = append(Intent{lane, what.ordinal, what.attempt, what.stage, what.request});
+    if (auto stored = co_await std::move(intending); !stored) co_return stored.error();
     auto taken = co_await bench_.reader.read(lane, what.request, what.ordinal);
-    pass.leave();
     if (!taken) co_return co_await reading_failed(lane, std::move(what), taken.error());
-    taken->reading.cost_s =
-        cost_s(cost_model_of(plan_.board), what.request);
-    auto stored = co_await append(ReadingTaken{lane, what.ordinal, what.attempt,
-                                               std::move(taken->reading), std::move(taken->wire)});
-    if (!stored) co_return stored.error();
+    taken->reading.cost_s = cost_s(cost_model_of(plan_.board), what.request);
+    auto storing = append(ReadingTaken{lane, what.ordinal, what.attempt, std::move(taken->reading),
+                                       std::move(taken->wire)});
+    if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
     co_return true;
 }
 
@@ -213,11 +189,8 @@ Task<bool> Engine::reading_failed(Lane lane, DoMeasure what, Fault fault) {
         case Reaction::read_anew: break;
     }
     if (fault.cause == Cause::board_reset) board_was_reset();
-    if (auto stored =
-            co_await append(ReadingVoid{lane, what.ordinal, what.attempt, fault.text()});
-        !stored) {
-        co_return stored.error();
-    }
+    auto storing = append(ReadingVoid{lane, what.ordinal, what.attempt, fault.text()});
+    if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
     co_await bench_.time.sleep_until(bench_.time.now() + pause_before(what.attempt), bench_.stop);
     if (fault.cause == Cause::board_reset || fault.cause == Cause::outcome_unknown) {
         auto up = co_await bench_.reader.bring_up(lane);
@@ -228,12 +201,11 @@ Task<bool> Engine::reading_failed(Lane lane, DoMeasure what, Fault fault) {
 
 Task<bool> Engine::fail_lane(Lane lane, Fault fault) {
     if (const LaneState& known = state_.lanes[number(lane)]; known.saved && known.moved) {
-        if (auto settled = co_await settle(lane, Settlement::restored, *known.former()); !settled) {
-            co_return settled.error();
-        }
+        auto settling = settle(lane, Settlement::restored, *known.former());
+        if (auto settled = co_await std::move(settling); !settled) co_return settled.error();
     }
-    auto stored = co_await append(LaneFinished{lane, LaneOutcome::failed, fault.text()});
-    if (!stored) co_return stored.error();
+    auto storing = append(LaneFinished{lane, LaneOutcome::failed, fault.text()});
+    if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
     co_return true;
 }
 
@@ -246,7 +218,8 @@ Task<void> Engine::settle(Lane lane, Settlement settlement, Codes codes) {
         auto written = co_await bench_.reader.restore(lane, wanted);
         if (written) {
             state_.lanes[number(lane)].moved = false;
-            auto stored = co_await append(LaneSettled{lane, settlement, std::move(*written)});
+            auto storing = append(LaneSettled{lane, settlement, std::move(*written)});
+            auto stored = co_await std::move(storing);
             plan_.note.drop(lane);
             if (auto noted = note_changed(); !noted) co_return noted.error();
             if (!stored) co_return stored.error();
@@ -268,9 +241,8 @@ Task<bool> Engine::carry_out(Lane lane, Action action) {
         co_return co_await measure(lane, std::move(*measuring));
     }
     if (auto* decide = std::get_if<DoDecide>(&action)) {
-        if (auto stored = co_await append(LaneDecided{lane, std::move(decide->decision)}); !stored) {
-            co_return stored.error();
-        }
+        auto storing = append(LaneDecided{lane, std::move(decide->decision)});
+        if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         // From here on an interrupted lane is to hold the decided codes, where they are to stay.
         plan_.note.set(resting(state_.lanes[number(lane)]));
         if (auto noted = note_changed(); !noted) co_return noted.error();
@@ -284,14 +256,13 @@ Task<bool> Engine::carry_out(Lane lane, Action action) {
         // The codes stay in the restore note; the lane says so.
         Fault told = fault;
         told.hint = "The lane's codes are not where they belong; the next contact writes them";
-        auto stored = co_await append(LaneFinished{lane, LaneOutcome::failed, told.text()});
-        if (!stored) co_return stored.error();
+        auto storing = append(LaneFinished{lane, LaneOutcome::failed, told.text()});
+        if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         co_return true;
     }
     if (auto* finish = std::get_if<DoFinish>(&action)) {
-        auto stored =
-            co_await append(LaneFinished{lane, finish->outcome, std::move(finish->reason)});
-        if (!stored) co_return stored.error();
+        auto storing = append(LaneFinished{lane, finish->outcome, std::move(finish->reason)});
+        if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         co_return true;
     }
     Fault fault;
@@ -406,7 +377,8 @@ Task<RunEnded> Engine::run(std::vector<StoredEvent> history) {
     auto rest = co_await settle_rest();
     if (outcome && !rest) outcome = rest.error();
     RunEnded end = ended(outcome);
-    auto stored = co_await append(end);
+    auto storing = append(end);
+    auto stored = co_await std::move(storing);
     if (!stored) {
         Fault fault = stored.error();
         if (!outcome && outcome.error().cause != Cause::io) fault = outcome.error();

@@ -142,6 +142,11 @@ Action LaneMachine::next() {
                     decision_->reason};
 }
 
+std::vector<Request> LaneMachine::first_batch(const SavedLane& saved) {
+    start_search(saved);
+    return batch();
+}
+
 std::string LaneMachine::phase() const {
     if (finished_) return "done";
     if (stage_ == Stage::compare) return "before/after";

@@ -65,6 +65,9 @@ class LaneMachine {
     void apply(const Event& event);
     Action next();
 
+    // What a lane found like that would be asked first; for a dry run.
+    std::vector<Request> first_batch(const SavedLane& saved);
+
     // For progress lines: "scan", "descent", ..., "before/after".
     std::string phase() const;
 

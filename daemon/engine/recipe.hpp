@@ -57,9 +57,6 @@ std::optional<Recipe> load_recipe(const std::string& path, Complaints& complaint
 // `complaints` is the one the document was parsed with.
 std::optional<Recipe> decode_recipe(const Document& document, Complaints& complaints);
 
-// Bits of one dwell at the board's bit rate.
-std::uint64_t dwell_bits(double dwell_s, double bit_rate_gbps);
-
 // Whether the board can do what the recipe asks: lanes, dimensions, strategy, error ratios, range
 // and dwell of the monitor. Complaints name the place in the recipe; none: it can.
 void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,

@@ -4,11 +4,14 @@
 #include <cmath>
 #include <utility>
 
+#include "daemon/engine/lane_setup.hpp"
 #include "daemon/engine/recipe.hpp"
 
 namespace lanewright {
 
 namespace {
+
+constexpr double longest_dwell_s = 86400;  // as the recipe's decoder takes it
 
 std::string short_number(double value) {
     char buffer[32];
@@ -18,10 +21,19 @@ std::string short_number(double value) {
     return std::string(buffer, end);
 }
 
+// To three digits, never less than the value itself: a hint that is followed must be enough.
+double rounded_up(double value) {
+    const double digit = std::pow(10.0, std::floor(std::log10(value)) - 2);
+    return std::ceil(value / digit) * digit;
+}
+
 class Check {
   public:
     Check(const Recipe& recipe, const BoardFile& board, Complaints& complaints)
-        : recipe_(recipe), board_(board), complaints_(complaints) {}
+        : recipe_(recipe),
+          board_(board),
+          complaints_(complaints),
+          bits_(static_cast<double>(dwell_bits_of(board, recipe))) {}
 
     void lanes() {
         if (!recipe_.lanes) return;
@@ -53,17 +65,15 @@ class Check {
         // Rule of three: with fewer than -ln(0.05) errors expected in a look, a position at the
         // error ratio shows none in more than one look of twenty and passes for error-free.
         const double least_errors = -std::log(0.05);
-        const double bits = static_cast<double>(dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps));
-        const double errors = bits * recipe_.search_error_ratio;
+        const double errors = bits_ * recipe_.search_error_ratio;
         if (errors >= least_errors) return;
-        const double longer_s =
-            least_errors / (recipe_.search_error_ratio * board_.bit_rate_gbps * 1e9);
+        const double longer_s = seconds_for(least_errors / recipe_.search_error_ratio);
+        std::string hint = "an error ratio of " + short_number(rounded_up(least_errors / bits_));
+        if (longer_s <= longest_dwell_s) hint += " or a dwell_s of " + short_number(longer_s);
         complain("/search_error_ratio",
                  short_number(recipe_.search_error_ratio) + ", " + short_number(errors) +
-                     " errors in a look of " + short_number(recipe_.dwell_s) + " s",
-                 "an error ratio of which one look shows about 3 errors",
-                 "a dwell_s of " + short_number(longer_s) + " or an error ratio of " +
-                     short_number(bits > 0 ? least_errors / bits : 0.1) + " would do");
+                     " errors in a look of " + short_number(bits_) + " bits",
+                 "an error ratio of which one look shows about 3 errors", hint + " would do");
     }
 
     void monitor_range() {
@@ -95,6 +105,17 @@ class Check {
     }
 
   private:
+    // A dwell of at least so many bits, in the steps in which the monitor takes it.
+    double seconds_for(double bits) const {
+        const auto& steps = board_.monitor.sequence;
+        const bool power_of_two = std::any_of(steps.begin(), steps.end(), [](const Step& step) {
+            const auto* write = std::get_if<WriteStep>(&step);
+            return write != nullptr && write->value == Operand(Parameter::dwell_log2);
+        });
+        if (power_of_two) bits = std::exp2(std::ceil(std::log2(bits)));
+        return rounded_up(bits / (board_.bit_rate_gbps * 1e9));
+    }
+
     // The place of the value, or of what it would stand in where it was left at its default.
     void complain(const std::string& pointer, std::string found, std::string expected,
                   std::string hint = {}) {
@@ -142,21 +163,19 @@ class Check {
     }
 
     void dwell_fits(const FieldName& name, const FieldDescription& field) {
-        const std::uint64_t bits = dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps);
-        const double exponent = bits > 0 ? std::ceil(std::log2(static_cast<double>(bits))) : 0;
+        const double exponent = std::log2(bits_);
         if (exponent >= field.lowest_allowed() && exponent <= field.highest_allowed()) return;
         const auto seconds = [&](std::uint32_t log2) {
             return short_number(std::ldexp(1.0, static_cast<int>(std::min(log2, 64u))) /
                                 (board_.bit_rate_gbps * 1e9));
         };
         complain("/dwell_s", short_number(recipe_.dwell_s),
-                 "at most " + seconds(field.highest_allowed()) + " s and at least " +
-                     seconds(field.lowest_allowed()) + " s, the limits of " + name.text());
+                 "from " + seconds(field.lowest_allowed()) + " to " +
+                     seconds(field.highest_allowed()) + " s, the limits of " + name.text());
     }
 
     void high_bits_fit(const FieldName& name, const FieldDescription& field) {
-        const std::uint64_t high = dwell_bits(recipe_.dwell_s, board_.bit_rate_gbps) >> 32;
-        if (high <= field.highest_allowed()) return;
+        if (bits_ < std::ldexp(static_cast<double>(field.highest_allowed()) + 1, 32)) return;
         complain("/dwell_s", short_number(recipe_.dwell_s),
                  "a dwell whose bits fit into " + name.text());
     }
@@ -177,16 +196,10 @@ class Check {
     const Recipe& recipe_;
     const BoardFile& board_;
     Complaints& complaints_;
+    double bits_;  // of one look
 };
 
 }  // namespace
-
-std::uint64_t dwell_bits(double dwell_s, double bit_rate_gbps) {
-    const double bits = dwell_s * bit_rate_gbps * 1e9;
-    if (!(bits > 0)) return 0;
-    // Rounded, so that 0.1 s at 25 Gb/s is the 2,500,000,000 bits it reads as.
-    return bits < 9.2e18 ? static_cast<std::uint64_t>(std::llround(bits)) : std::uint64_t{1} << 63;
-}
 
 void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
                                 const std::vector<std::string_view>& strategy_names,

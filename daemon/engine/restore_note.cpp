@@ -11,6 +11,7 @@
 #include <nlohmann/json.hpp>
 #include <sstream>
 
+#include "daemon/store/store_error.hpp"
 #include "daemon/store/value_json.hpp"
 
 namespace lanewright {

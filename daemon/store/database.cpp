@@ -317,7 +317,7 @@ std::vector<RunRow> Database::runs() const {
 
 RunRow Database::find_run(const std::string& id_or_prefix) const {
     const std::vector<RunRow> all = runs();
-    if (all.empty()) throw StoreError("the store " + path_ + " holds no run yet");
+    if (all.empty()) throw NoSuchRun("the store " + path_ + " holds no run yet");
     if (id_or_prefix == "latest") return all.back();
     std::vector<const RunRow*> found;
     for (const RunRow& row : all) {
@@ -325,7 +325,7 @@ RunRow Database::find_run(const std::string& id_or_prefix) const {
         if (!id_or_prefix.empty() && row.id.starts_with(id_or_prefix)) found.push_back(&row);
     }
     if (found.size() == 1) return *found.front();
-    throw StoreError((found.empty() ? "there is no run \"" : "more than one run begins with \"") +
+    throw NoSuchRun((found.empty() ? "there is no run \"" : "more than one run begins with \"") +
                      id_or_prefix + "\" in " + path_ + "; the newest is " + all.back().id +
                      ". `lanewright runs` lists them");
 }

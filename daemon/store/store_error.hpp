@@ -12,4 +12,10 @@ class StoreError : public std::runtime_error {
     using std::runtime_error::runtime_error;
 };
 
+// The store is fine; the run that was named is not in it.
+class NoSuchRun : public StoreError {
+  public:
+    using StoreError::StoreError;
+};
+
 }  // namespace lanewright

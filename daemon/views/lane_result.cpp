@@ -11,7 +11,7 @@ namespace lanewright {
 namespace {
 
 template <class T, class Decode>
-T decoded(const SourceFile& file, Decode decode) {
+T decoded(const SourceFile& file, const Decode& decode) {
     Complaints complaints;
     std::optional<T> out;
     if (auto document = Document::parse(file.text, file.path, complaints)) {
@@ -47,7 +47,9 @@ std::optional<Margin> margin_of(const std::vector<Reading>& readings, const RunV
 RunView view_of(const RunRow& row, const Database& database) {
     RunView view;
     view.manifest = row.manifest;
-    view.board = decoded<BoardFile>(row.manifest.board_file, decode_board_file);
+    view.board = decoded<BoardFile>(
+        row.manifest.board_file,
+        [](const Document& document, Complaints& all) { return decode_board_file(document, all); });
     view.recipe = decoded<Recipe>(row.manifest.recipe_file, decode_recipe);
     view.space = code_space_of(view.board);
     view.state = fold(all_events(database, row.id));

@@ -1,5 +1,6 @@
 #include <algorithm>
 #include <cstdint>
+#include <optional>
 #include <utility>
 
 #include "drivers/config/board_parts.hpp"
@@ -81,13 +82,23 @@ ForbiddenRange decode_range(const Object& object, const BoardFile& board) {
         lowest = field->lowest_allowed();
         highest = std::min<std::int64_t>(field->highest_allowed(), highest_code);
     }
-    range.lowest = static_cast<std::int32_t>(object.integer("lowest", {lowest, highest}));
-    range.highest = static_cast<std::int32_t>(object.integer("highest", {lowest, highest}));
-    if (range.lowest > range.highest) {
+    const auto code = [&](std::string_view key) -> std::optional<std::int32_t> {
+        const Node node = object.need(key);
+        const std::int64_t value = node.integer({0, highest_code});
+        if (value >= lowest && value <= highest) return static_cast<std::int32_t>(value);
+        node.complain(node.described(), "a code of " + range.dimension + ", " +
+                                            std::to_string(lowest) + " to " +
+                                            std::to_string(highest));
+        return {};
+    };
+    const auto from = code("lowest");
+    const auto to = code("highest");
+    if (from && to && *from > *to) {
         const Node node = object.need("highest");
-        node.complain(node.described(),
-                      "highest not below lowest, " + std::to_string(range.lowest));
+        node.complain(node.described(), "highest not below lowest, " + std::to_string(*from));
     }
+    range.lowest = from.value_or(0);
+    range.highest = to.value_or(0);
     object.finish();
     return range;
 }

@@ -138,12 +138,13 @@ void check_strobe(const Object& top, const BoardFile& board) {
 
 void decode_sequences(const Object& top, BoardFile& board) {
     const Object sequences = top.object("sequences");
-    board.apply = decode_sequence(sequences.list("apply"), SequenceKind::apply, board.map);
+    const List apply = sequences.list("apply");
+    board.apply = decode_sequence(apply, SequenceKind::apply, board.map);
     board.bring_up =
         decode_sequence(sequences.list_or_empty("bring_up"), SequenceKind::bring_up, board.map);
     sequences.finish();
     board.strobe = top.boolean_or("strobe", true);
-    check_strobe(top, board);
+    if (board.apply.size() == apply.size()) check_strobe(top, board);
 }
 
 void decode_temperature(const Object& top, TemperatureCoefficients& temperature) {

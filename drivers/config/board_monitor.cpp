@@ -29,9 +29,12 @@ void decode_groups(const Object& monitor, BoardFile& board) {
     for (const Node group_node : monitor.list_or_empty("shared_by")) {
         std::vector<std::uint16_t> group;
         for (const Node node : group_node.list()) {
-            const auto lane =
-                static_cast<std::uint16_t>(node.integer({0, board.map.lane_count - 1}));
-            if (node.is_number() && !seen.insert(lane).second)
+            const auto lane = static_cast<std::uint16_t>(node.integer({0, 65535}));
+            if (!node.is_number()) continue;
+            if (lane >= board.map.lane_count)
+                node.complain(node.described(),
+                              "a lane from 0 to " + std::to_string(board.map.lane_count - 1));
+            else if (!seen.insert(lane).second)
                 node.complain("lane " + std::to_string(lane) + " a second time",
                               "each lane in one group at most");
             group.push_back(lane);

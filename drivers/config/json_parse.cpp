@@ -231,7 +231,10 @@ class TreeBuilder {
         if (message.find("unexpected end of input") != std::string::npos) return text.size();
         if (message.find("invalid string") != std::string::npos) {
             if (message.find("missing closing quote") != std::string::npos) return text.size();
-            return read_end - 1;
+            // A sequence broken off by plain text: the byte that began it is the wrong one.
+            const bool plain = static_cast<unsigned char>(text[read_end - 1]) < 0x80;
+            const bool broken_off = message.find("ill-formed UTF-8") != std::string::npos && plain;
+            return read_end - (broken_off && consumed_ > 1 ? 2 : 1);
         }
         if (message.find("invalid literal") != std::string::npos ||
             message.find("invalid number") != std::string::npos)

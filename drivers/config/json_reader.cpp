@@ -5,10 +5,10 @@
 #include <cerrno>
 #include <charconv>
 #include <cmath>
-#include <cstring>
 #include <filesystem>
 #include <fstream>
 #include <iterator>
+#include <system_error>
 #include <tuple>
 #include <utility>
 
@@ -24,6 +24,7 @@ namespace {
 
 constexpr std::uintmax_t largest_file_bytes = std::uintmax_t{16} << 20;
 constexpr std::size_t longest_quote = 40;
+constexpr double largest_whole_double = 9007199254740992.0;  // 2^53: all integers up to here exist
 
 std::string number_text(double value) {
     char buffer[32];
@@ -266,6 +267,10 @@ std::int64_t Node::integer(IntegerRange range) const {
     std::optional<std::int64_t> value;
     std::string hint;
     if (value_->kind == JsonKind::integer) value = value_->integer;
+    // 8.0 is an integer to JSON Schema, and to whatever program wrote the file.
+    if (value_->kind == JsonKind::number && std::abs(value_->number) <= largest_whole_double &&
+        value_->number == std::floor(value_->number))
+        value = static_cast<std::int64_t>(value_->number);
     if (is_text()) {
         value = from_hex(value_->text);
         if (!value) hint = "write a number without quotes, or a hexadecimal one like \"0x1F4\"";
@@ -447,7 +452,7 @@ std::optional<Document> Document::load(const std::string& path, Complaints& comp
     if (std::filesystem::file_size(path, error) > largest_file_bytes && !error) return too_large();
 
     std::ifstream in(path, std::ios::binary);
-    if (!in) return refuse(std::strerror(errno), "a readable JSON file");
+    if (!in) return refuse(std::generic_category().message(errno), "a readable JSON file");
     std::string text;
     char block[65536];
     while (in.read(block, sizeof block) || in.gcount() > 0) {

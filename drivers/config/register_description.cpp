@@ -32,29 +32,31 @@ std::optional<unsigned> bit_number(std::string_view text) {
 }
 
 // "7:4" or "0" into high and low bit; complains of anything else, and of bits beyond the register.
-void decode_bits(const Node& node, unsigned register_width, FieldDescription& field) {
+// False then.
+bool decode_bits(const Node& node, unsigned register_width, FieldDescription& field) {
     const std::string text = node.text();
-    if (!node.is_text()) return;
+    if (!node.is_text()) return false;
     const std::size_t colon = text.find(':');
     const auto high = bit_number(std::string_view(text).substr(0, colon));
     const auto low =
         colon == std::string::npos ? high : bit_number(std::string_view(text).substr(colon + 1));
     if (!high || !low) {
         node.complain(node.described(), "bits such as \"7:4\", highest first, or \"0\"");
-        return;
+        return false;
     }
     if (*high < *low) {
         node.complain(node.described(), "the highest bit first",
                       "write \"" + std::to_string(*low) + ":" + std::to_string(*high) + "\"");
-        return;
+        return false;
     }
     if (*high >= register_width) {
         node.complain(node.described(), "bits below " + std::to_string(register_width) +
                                             ", the width of the register");
-        return;
+        return false;
     }
     field.high_bit = *high;
     field.low_bit = *low;
+    return true;
 }
 
 void check_role(const Object& object, const FieldDescription& field, bool per_lane) {
@@ -83,10 +85,11 @@ void check_reset(const Object& object, const FieldDescription& field) {
                                         std::to_string(field.highest_allowed()));
 }
 
-FieldDescription decode_field(const Object& object, unsigned register_width, bool per_lane) {
+FieldDescription decode_field(const Object& object, unsigned register_width, bool per_lane,
+                              bool& bits_known) {
     FieldDescription field;
     field.name = decode_name(object.need("name"));
-    decode_bits(object.need("bits"), register_width, field);
+    bits_known = decode_bits(object.need("bits"), register_width, field);
     field.role =
         static_cast<Role>(object.word_or("role", 0, {"none", "tuned", "control", "scratch"}));
     field.access = static_cast<Access>(
@@ -111,12 +114,12 @@ FieldDescription decode_field(const Object& object, unsigned register_width, boo
     return field;
 }
 
-void check_against_earlier(const Node& node, const FieldDescription& field,
+void check_against_earlier(const Node& node, const FieldDescription& field, bool bits_known,
                            const std::vector<FieldDescription>& earlier) {
     for (const FieldDescription& other : earlier) {
         if (!field.name.empty() && other.name == field.name)
             node.complain("a second field " + field.name, "each name once in a register");
-        if ((other.mask() & field.mask()) != 0)
+        if (bits_known && (other.mask() & field.mask()) != 0)
             node.complain("field " + field.name + " on bits of field " + other.name,
                           "fields that do not overlap");
     }
@@ -142,8 +145,10 @@ RegisterDescription decode_register(const Object& object, const RegisterMapDescr
         fields.node().complain("an empty list", "at least one field");
     for (const Node node : fields) {
         const Object field_object = node.object();
-        FieldDescription field = decode_field(field_object, reg.width_bits, reg.per_lane);
-        check_against_earlier(node, field, reg.fields);
+        bool bits_known = false;
+        FieldDescription field =
+            decode_field(field_object, reg.width_bits, reg.per_lane, bits_known);
+        check_against_earlier(node, field, bits_known, reg.fields);
         reg.fields.push_back(std::move(field));
     }
     object.finish();
@@ -156,6 +161,7 @@ void decode_lanes(const Object& top, RegisterMapDescription& map) {
     map.lane_base = static_cast<std::uint32_t>(lanes.integer("base", {0, highest_address}));
     const Node stride = lanes.need("stride");
     map.lane_stride = static_cast<std::uint32_t>(stride.integer({1, highest_address}));
+    if (stride.is_null()) map.lane_stride = 0;  // not known: nothing can be checked against it
     const std::uint64_t end = std::uint64_t{map.lane_base} +
                               std::uint64_t{map.lane_count} * std::uint64_t{map.lane_stride};
     if (end > std::uint64_t{highest_address} + 1)
@@ -169,6 +175,7 @@ class AddressBook {
     explicit AddressBook(const RegisterMapDescription& map) : map_(map) {}
 
     void add(const Node& node, const RegisterDescription& reg) {
+        if (reg.per_lane && map_.lane_stride == 0) return;
         const std::uint16_t copies = reg.per_lane ? map_.lane_count : 1;
         for (std::uint16_t lane = 0; lane < copies; ++lane) {
             const std::uint64_t address =

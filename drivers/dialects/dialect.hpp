@@ -101,6 +101,9 @@ class Dialect {
     virtual std::string sent_hex(Ticket ticket) const = 0;
 
     virtual void link_reopened() = 0;
+
+    // Nothing is sent until link_reopened(); what is under way stays under way.
+    virtual void link_lost() = 0;
 };
 
 struct DialectOptions {

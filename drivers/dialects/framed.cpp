@@ -111,6 +111,8 @@ void Framed::link_reopened() {
     begin_greeting(false);
 }
 
+void Framed::link_lost() { state_ = State::closed; }
+
 void Framed::begin_greeting(bool new_session) {
     if (new_session) {
         session_ = session_after(session_);
@@ -424,7 +426,6 @@ void Framed::refuse(Slot& slot, Error error, DialectStep& step) {
     slot.use = Slot::Use::free;
     if (clearing) return;
     const Ticket ticket = slot.ticket;
-    slot.count = static_cast<std::uint16_t>(slot.count - 1);  // a refused batch leaves no trace
     finish(ticket, fault_of(Cause::refused, text_of(error)), step);
 }
 

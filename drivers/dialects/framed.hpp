@@ -33,6 +33,7 @@ class Framed final : public Dialect {
     bool was_sent(Ticket ticket) const override;
     std::string sent_hex(Ticket ticket) const override;
     void link_reopened() override;
+    void link_lost() override;
 
   private:
     // closed: no link yet. greeting: hello sent or due. greeted: identity only. open: admitted.

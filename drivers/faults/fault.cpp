@@ -21,6 +21,7 @@ const char* name_of(Cause cause) {
         case Cause::no_permission: return "no permission";
         case Cause::io: return "input/output";
         case Cause::stopped: return "stopped";
+        case Cause::bad_data: return "bad data";
         case Cause::diverged: return "diverged";
         case Cause::internal: return "internal";
     }

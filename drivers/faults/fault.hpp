@@ -33,6 +33,7 @@ enum class Cause : std::uint8_t {
     no_permission,     // 77
     io,                // store or file system: 74
     stopped,           // a stop was asked for
+    bad_data,          // what was named does not exist or cannot be read: 65
     diverged,          // a resumed run would not repeat what is stored
     internal           // a broken invariant of ours: 70
 };

@@ -21,7 +21,7 @@ struct SerialSettings {
     std::string path;
     std::uint32_t baud = 921600;
     std::chrono::nanoseconds settle{};  // quiet time after opening; then input is dropped
-    std::optional<bool> dtr, rts;       // idle level; absent: as the kernel leaves it
+    std::optional<bool> dtr = {}, rts = {};  // idle level; absent: as the kernel leaves it
     bool hang_up_on_close = false;      // HUPCL: dropping DTR resets many boards
 };
 

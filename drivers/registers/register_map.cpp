@@ -196,6 +196,16 @@ Result<void> RegisterMap::pause(Batch& batch, std::chrono::microseconds time) co
     return {};
 }
 
+Batch RegisterMap::part_of(const Batch& batch, std::size_t first, std::size_t count) {
+    Batch part;
+    for (const Operation& operation : batch.operations().subspan(first, count)) {
+        part.operations_.push_back(operation);
+        const auto* write = std::get_if<Write>(&operation);
+        if (write != nullptr && !write->read_back && !batch.repeatable()) part.repeatable_ = false;
+    }
+    return part;
+}
+
 std::string RegisterMap::name_at(std::uint32_t address, std::uint32_t mask) const {
     const auto found = owner_of_address_.find(address);
     if (found == owner_of_address_.end()) return hex(address);

@@ -65,6 +65,10 @@ class RegisterMap {
 
     Result<void> pause(Batch& batch, std::chrono::microseconds time) const;
 
+    // Operations `first` to `first + count - 1` of a batch that is too long for its dialect.
+    // Taken as not repeatable where the whole is not and the part writes without read-back.
+    static Batch part_of(const Batch& batch, std::size_t first, std::size_t count);
+
     // Limits and forbidden combinations of a whole set of codes.
     Result<void> check_codes(Lane lane, const Codes& codes) const;
 

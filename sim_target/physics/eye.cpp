@@ -17,8 +17,16 @@ std::array<double, 4> cubic_weights(double part) {
     return {-b * c * d / 6.0, a * c * d / 2.0, -a * b * d / 2.0, a * b * c / 6.0};
 }
 
+// The same polynomial's slope per sample.
+std::array<double, 4> slope_weights(double part) {
+    const double a = part + 1.0, b = part, c = part - 1.0, d = part - 2.0;
+    return {-(b * c + b * d + c * d) / 6.0, (a * c + a * d + c * d) / 2.0,
+            -(a * b + a * d + b * d) / 2.0, (a * b + a * c + b * c) / 6.0};
+}
+
 struct Position {
     std::size_t sample;  // the one before the two around the point
+    double part;         // of the way from the first of the two to the second
     std::array<double, 4> weight;
 };
 
@@ -28,7 +36,8 @@ Position position_of(double phase_ui, const Grid& grid) {
     const auto length = static_cast<long long>(grid.samples());
     long long first = (static_cast<long long>(whole) - 1) % length;
     if (first < 0) first += length;
-    return {static_cast<std::size_t>(first), cubic_weights(samples - whole)};
+    const double part = samples - whole;
+    return {static_cast<std::size_t>(first), part, cubic_weights(part)};
 }
 
 }  // namespace
@@ -38,9 +47,10 @@ double score(const Margins& margins, const Required& required) {
                     2.0 * std::min(margins.left_ui, margins.right_ui) / required.width_ui);
 }
 
-void Eye::fill(std::span<const double> pulse_mv, double noise_mv, const Decision& decision) {
+void Eye::fill(std::span<const double> pulse_mv, const Disturbance& disturbance,
+               const Decision& decision) {
     pulse_.assign(pulse_mv.begin(), pulse_mv.end());
-    noise_ = noise_mv;
+    disturbance_ = disturbance;
     decision_ = decision;
     recovered_ui_ = find_phase();
 }
@@ -79,26 +89,72 @@ double Eye::find_phase() const {
     return best_ui;
 }
 
+// Tap k is what the symbol k unit intervals earlier adds now; the last one is that of the next
+// symbol, the window being circular.
 void Eye::take_taps(double phase_ui) {
     const Position at = position_of(phase_ui, grid_);
+    const std::array<double, 4> slope = slope_weights(at.part);
     const std::size_t mask = grid_.samples() - 1;
+    const auto per_ui = static_cast<double>(grid_.samples_per_ui);
+    slope_others_ = 0;
     for (std::size_t k = 0; k < grid_.window_ui; ++k) {
         const std::size_t start = at.sample + k * grid_.samples_per_ui;
-        double sum = 0;
-        for (std::size_t i = 0; i < 4; ++i) sum += at.weight[i] * pulse_[(start + i) & mask];
+        double sum = 0, rise = 0;
+        for (std::size_t i = 0; i < 4; ++i) {
+            const double sample = pulse_[(start + i) & mask];
+            sum += at.weight[i] * sample;
+            rise += slope[i] * sample;
+        }
         taps_[k] = sum;
+        rise *= per_ui;
+        if (k == 0) slope_now_ = rise;
+        else if (k == 1) slope_before_ = rise;
+        else if (k + 1 == grid_.window_ui) slope_after_ = rise;
+        else slope_others_ += rise * rise;
     }
-    cursor_ = taps_.front();
 }
 
 void Eye::settle_at(double phase_ui) {
     take_taps(phase_ui);
-    isi_.fill(std::span<const double>(taps_).subspan(1), noise_);
+    // All but the cursor and its two neighbours.
+    isi_.fill(std::span<const double>(taps_).subspan(2, taps_.size() - 3), disturbance_.noise_mv);
+    for (std::size_t i = 0; i < around_.size(); ++i) around_[i] = surroundings(i);
 }
 
-// A one is lost below the threshold, a zero above it; the interference is symmetric about zero.
+Eye::Surroundings Eye::surroundings(std::size_t index) const {
+    const double before = (index & 1U) != 0 ? 1.0 : -1.0;
+    const double after = (index & 2U) != 0 ? 1.0 : -1.0;
+    const double slope = slope_now_ + before * slope_before_ + after * slope_after_;
+    return {taps_.front() + before * taps_[1] + after * taps_.back(),
+            disturbance_.jitter_ui * std::sqrt(slope * slope + slope_others_)};
+}
+
+double Eye::lost_ones(double threshold_mv) const {
+    double sum = 0;
+    for (const Surroundings& around : around_)
+        sum += isi_.below(threshold_mv - around.centre_mv, around.jitter_mv);
+    return sum / static_cast<double>(around_.size());
+}
+
+double Eye::level_of_ones(double share) const {
+    const double wanted = gaussian_tail_inverse(share);
+    const auto spare = [&](double level) {
+        return wanted - gaussian_tail_inverse(std::clamp(lost_ones(level), 1e-300, 0.9999));
+    };
+    double low = around_[0].centre_mv, high = low, jitter = 0;
+    for (const Surroundings& around : around_) {
+        low = std::min(low, around.centre_mv);
+        high = std::max(high, around.centre_mv);
+        jitter = std::max(jitter, around.jitter_mv);
+    }
+    // At the highest centre at least half the ones are below; far under the lowest next to none.
+    low += isi_.lowest() - (std::abs(wanted) + 1.0) * (isi_.sigma() + jitter);
+    return crossing(spare, {low, spare(low)}, {high, spare(high)}, 1e-7 * isi_.sigma());
+}
+
+// A one is lost below the threshold, a zero above it; both see the same surroundings mirrored.
 double Eye::ratio(double threshold_mv) const {
-    return 0.5 * (isi_.below(threshold_mv - cursor_) + isi_.below(-threshold_mv - cursor_));
+    return 0.5 * (lost_ones(threshold_mv) + lost_ones(-threshold_mv));
 }
 
 double Eye::error_ratio_at(double phase_ui, double offset_mv) {
@@ -124,7 +180,7 @@ double Eye::edge_time_ui(double wanted, double at_centre, double side) {
 // At the level where the ones alone use up the error ratio the zeros add theirs: the edge lies at or
 // inside it.
 void Eye::open_heights(double error_ratio, Margins& margins) const {
-    const double level = cursor_ + isi_.level_at(2.0 * error_ratio);
+    const double level = level_of_ones(2.0 * error_ratio);
     const auto distance = [&](double threshold, double direction) {
         const double reach = level - direction * threshold;
         const double wanted = gaussian_tail_inverse(error_ratio);
@@ -134,7 +190,7 @@ void Eye::open_heights(double error_ratio, Margins& margins) const {
         };
         const double at_reach = spare(reach);
         if (at_reach > -1e-6) return reach;
-        return crossing(spare, {0.0, spare(0.0)}, {reach, at_reach}, 1e-6 * noise_);
+        return crossing(spare, {0.0, spare(0.0)}, {reach, at_reach}, 1e-6 * isi_.sigma());
     };
     margins.up_mv = distance(decision_.offset_mv, 1.0);
     margins.down_mv = distance(decision_.offset_mv, -1.0);
@@ -143,15 +199,15 @@ void Eye::open_heights(double error_ratio, Margins& margins) const {
 Margins Eye::margins(double error_ratio) {
     Margins margins;
     settle_at(recovered_ui_ + decision_.phase_ui);
-    margins.locked = cursor_ > 0;
-    margins.noise_mv = noise_;
+    margins.locked = taps_.front() > 0;
+    margins.noise_mv = disturbance_.noise_mv;
     margins.centre_error_ratio = ratio(decision_.offset_mv);
     margins.closed = !(margins.centre_error_ratio < error_ratio);
     const double wanted = gaussian_tail_inverse(error_ratio);
     const double at_centre =
         gaussian_tail_inverse(std::clamp(margins.centre_error_ratio, 1e-300, 0.75));
     if (margins.closed) {
-        const double level = cursor_ + isi_.level_at(error_ratio);
+        const double level = level_of_ones(error_ratio);
         margins.up_mv = level - decision_.offset_mv;
         margins.down_mv = level + decision_.offset_mv;
         margins.left_ui = margins.right_ui = -0.5 * (wanted - at_centre) / wanted;
@@ -163,17 +219,26 @@ Margins Eye::margins(double error_ratio) {
     return margins;
 }
 
+// The worst of the four surroundings, the worst case of the large taps beyond them, and the small
+// ones as noise.
 double Eye::screening_level(double phase_ui, double deviate) {
     take_taps(phase_ui);
-    double worst = 0, variance = noise_ * noise_;
-    for (std::size_t k = 1; k < taps_.size(); ++k) {
+    const double noise = disturbance_.noise_mv * disturbance_.noise_mv;
+    const double jitter = disturbance_.jitter_ui * disturbance_.jitter_ui;
+    const double large = 1.5 * std::sqrt(noise + jitter * slope_others_);
+    double worst = 0, small = 0;
+    for (std::size_t k = 2; k + 1 < taps_.size(); ++k) {
         const double tap = std::abs(taps_[k]);
-        if (tap > 1.5 * noise_)
-            worst += tap;
-        else
-            variance += tap * tap;
+        if (tap > large) worst += tap;
+        else small += tap * tap;
     }
-    return cursor_ - worst - deviate * std::sqrt(variance) - std::abs(decision_.offset_mv);
+    double least = 1e300;
+    for (std::size_t i = 0; i < around_.size(); ++i) {
+        const Surroundings around = surroundings(i);
+        const double sigma = std::sqrt(noise + small + around.jitter_mv * around.jitter_mv);
+        least = std::min(least, around.centre_mv - deviate * sigma);
+    }
+    return least - worst - std::abs(decision_.offset_mv);
 }
 
 double Eye::screening_score(const Required& required) {

@@ -100,13 +100,15 @@ void NoisyIsi::finish() {
         sum_before_[i + 1] = sum_before_[i] + weight_[i];
 }
 
-double NoisyIsi::below(double level) const {
+double NoisyIsi::below(double level, double more_sigma) const {
+    const double sigma = std::sqrt(sigma_ * sigma_ + more_sigma * more_sigma);
+    const double scale = 1.0 / sigma;
     // Values more than eight sigma below the level are wholly below it.
     const auto certain =
-        std::lower_bound(value_.begin(), value_.end(), level - 8.0 * sigma_) - value_.begin();
+        std::lower_bound(value_.begin(), value_.end(), level - 8.0 * sigma) - value_.begin();
     double sum = sum_before_[static_cast<std::size_t>(certain)];
     for (std::size_t i = static_cast<std::size_t>(certain); i < value_.size(); ++i) {
-        const double tail = gaussian_tail((value_[i] - level) / sigma_);
+        const double tail = quick_gaussian_tail((value_[i] - level) * scale);
         // All the rest together weighs at most what is left of 1.
         if (tail < 1e-10 * sum) break;
         sum += weight_[i] * tail;

@@ -27,9 +27,11 @@ class NoisyIsi {
 
     // Probability that interference and noise together are below `level`; relative accuracy 1e-9 of
     // what the support above allows, down to 1e-290.
-    double below(double level) const;
+    // `more_sigma`: further Gaussian noise, for this call only.
+    double below(double level, double more_sigma = 0) const;
     // The level with below(level) = probability, inside (0, 1/2).
     double level_at(double probability) const;
+    double lowest() const { return value_.front(); }  // of the support, without noise
 
     double sigma() const { return sigma_; }                    // of the Gaussian part
     std::size_t support_size() const { return value_.size(); }

@@ -57,8 +57,8 @@ struct CodesScore {
 
 // Every combination, in the order of codes_at(). The result does not depend on `threads` (from 1).
 std::vector<CodesScore> all_codes(const Oracle& oracle, const Required& required, unsigned threads);
-// Screens all by peak distortion with noise, then evaluates the best `share` in full. Of equals the
-// first in the order of codes_at().
+// Screens all by peak distortion with noise, evaluates the best `share` in full and climbs from the
+// best of these over neighbouring codes. Of equals the first in the order of codes_at().
 CodesScore best_codes(const Oracle& oracle, const Required& required, unsigned threads,
                       double share = 0.02);
 

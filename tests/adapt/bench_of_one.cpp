@@ -9,7 +9,9 @@
 namespace lanewright::tests {
 namespace {
 
-Measured plain(double value) { return {value, 0, Bound::exact}; }
+Measured plain(double value) {
+    return {value, 0, Bound::exact};
+}
 
 }  // namespace
 
@@ -43,8 +45,7 @@ Reading BenchOfOne::read(const Request& request) {
     return reading;
 }
 
-Outcome run(Procedure& procedure, const LaneProblem& problem, BenchOfOne& bench,
-            std::size_t most) {
+Outcome run(Procedure& procedure, const LaneProblem& problem, BenchOfOne& bench, std::size_t most) {
     Outcome outcome;
     for (;;) {
         const auto requests = procedure.propose(Condition{});
@@ -76,9 +77,8 @@ CodeSpace equalizer_space(std::vector<Forbidden> forbidden) {
         for (int code = 0; code <= dimension.highest; ++code) {
             const double share = static_cast<double>(code) / dimension.highest;
             // Resistors add in parallel: the conductance is linear in the code.
-            dimension.nominal.push_back(
-                resistor ? 1 / (1 / first + share * (1 / last - 1 / first))
-                         : first + share * (last - first));
+            dimension.nominal.push_back(resistor ? 1 / (1 / first + share * (1 / last - 1 / first))
+                                                 : first + share * (last - first));
         }
         return dimension;
     };

@@ -31,8 +31,8 @@ struct BenchOfOne {
 
 struct Outcome {
     Decision decision;
-    std::vector<Codes> asked;            // in the order proposed
-    std::vector<std::size_t> batches;    // their sizes
+    std::vector<Codes> asked;          // in the order proposed
+    std::vector<std::size_t> batches;  // their sizes
 };
 
 // Runs a procedure to its end on that bench; fails the test if it does not end within `most`.

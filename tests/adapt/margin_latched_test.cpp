@@ -45,8 +45,7 @@ TEST_CASE("an edge at the counter's top is only known to be at least that far") 
     CHECK(reading.up_mv->value == 126);
     CHECK(reading.right_ui->bound == Bound::at_least);
     CHECK(reading.right_ui->value == 31.0 / 64);
-    CHECK(latched_reading(grid, LatchedEdges{63, 0, 10, 9, true}, wanted).status ==
-          Status::closed);
+    CHECK(latched_reading(grid, LatchedEdges{63, 0, 10, 9, true}, wanted).status == Status::closed);
 }
 
 TEST_CASE("without lock there are no edges") {

@@ -75,7 +75,7 @@ TEST_CASE("the confidence reached at a given length is the Poisson tail") {
 
 TEST_CASE("zero errors at 95 percent need the well-known dwell times") {
     const double bits = poisson_limits(0, 0.95, Sides::one).high / 1e-12;
-    CHECK(bits / 8e9 == Approx(374.467).epsilon(1e-6));
+    CHECK(bits / 8e9 == Approx(374.467).epsilon(2e-6));
     CHECK(bits / 10.3125e9 == Approx(290.495).epsilon(2e-6));
     CHECK(bits / 25.78125e9 == Approx(116.198).epsilon(3e-6));
 }
@@ -87,16 +87,14 @@ TEST_CASE("Clopper-Pearson limits match the exact table") {
         std::uint64_t events, trials;
         double up90, up95, up99;
     };
-    for (const auto& row : {Row{0, 20, 0.108749, 0.139108, 0.205672},
-                            Row{1, 20, 0.180961, 0.216106, 0.288790},
-                            Row{5, 20, 0.414890, 0.455582, 0.532106},
-                            Row{10, 20, 0.661829, 0.698046, 0.761040},
-                            Row{0, 100, 0.0227628, 0.0295130, 0.0450074},
-                            Row{3, 100, 0.0655858, 0.0757108, 0.0969710},
-                            Row{10, 100, 0.149883, 0.163718, 0.191330},
-                            Row{0, 1000, 0.00229994, 0.00299125, 0.00459458},
-                            Row{7, 1000, 0.0117428, 0.0131077, 0.0159281},
-                            Row{10, 1000, 0.0153650, 0.0169032, 0.0200426}}) {
+    for (const auto& row :
+         {Row{0, 20, 0.108749, 0.139108, 0.205672}, Row{1, 20, 0.180961, 0.216106, 0.288790},
+          Row{5, 20, 0.414890, 0.455582, 0.532106}, Row{10, 20, 0.661829, 0.698046, 0.761040},
+          Row{0, 100, 0.0227628, 0.0295130, 0.0450074},
+          Row{3, 100, 0.0655858, 0.0757108, 0.0969710}, Row{10, 100, 0.149883, 0.163718, 0.191330},
+          Row{0, 1000, 0.00229994, 0.00299125, 0.00459458},
+          Row{7, 1000, 0.0117428, 0.0131077, 0.0159281},
+          Row{10, 1000, 0.0153650, 0.0169032, 0.0200426}}) {
         const auto at = [&](double confidence) {
             return binomial_limits(row.events, row.trials, confidence, Sides::one).high;
         };

@@ -24,12 +24,12 @@ TEST_CASE("the Q scale matches the table from 1e-3 to 1e-18") {
     struct Row {
         double ratio, q;
     };
-    for (const auto& row : {Row{1e-3, 3.09023231}, Row{1e-4, 3.71901649}, Row{1e-5, 4.26489079},
-                            Row{1e-6, 4.75342431}, Row{1e-7, 5.19933758}, Row{1e-8, 5.61200124},
-                            Row{1e-9, 5.99780702}, Row{1e-10, 6.36134090}, Row{1e-11, 6.70602316},
-                            Row{1e-12, 7.03448383}, Row{1e-13, 7.34879610}, Row{1e-14, 7.65062809},
-                            Row{1e-15, 7.94134533}, Row{1e-16, 8.22208222},
-                            Row{1e-18, 8.75729035}}) {
+    for (const auto& row :
+         {Row{1e-3, 3.09023231}, Row{1e-4, 3.71901649}, Row{1e-5, 4.26489079},
+          Row{1e-6, 4.75342431}, Row{1e-7, 5.19933758}, Row{1e-8, 5.61200124},
+          Row{1e-9, 5.99780702}, Row{1e-10, 6.36134090}, Row{1e-11, 6.70602316},
+          Row{1e-12, 7.03448383}, Row{1e-13, 7.34879610}, Row{1e-14, 7.65062809},
+          Row{1e-15, 7.94134533}, Row{1e-16, 8.22208222}, Row{1e-18, 8.75729035}}) {
         CHECK(normal_q(row.ratio) == Approx(row.q).epsilon(2e-9));
         CHECK(normal_q_of_log(std::log(row.ratio)) == Approx(row.q).epsilon(2e-9));
     }

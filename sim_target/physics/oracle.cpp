@@ -2,13 +2,11 @@
 
 #include <algorithm>
 #include <array>
-#include <atomic>
 #include <cmath>
 #include <cstdio>
 #include <numbers>
 #include <numeric>
 #include <stdexcept>
-#include <thread>
 
 #include "sim_target/physics/fourier.hpp"
 #include "sim_target/physics/keyed_random.hpp"
@@ -127,6 +125,7 @@ struct Oracle::Parts {
           network(network_of(target, lane_number, channel.chain)),
           fourier(target.grid.samples()),
           sampler_noise_mv(target.sampler_noise_mv),
+          sampler_jitter_ui(target.sampler_jitter_ui),
           decision(decision_of(target, lane_number)),
           monitor(target.monitor),
           lane(lane_number),
@@ -139,7 +138,7 @@ struct Oracle::Parts {
     std::vector<Cx> symbol;
     Network network;
     RealInverseFourier fourier;
-    double sampler_noise_mv;
+    double sampler_noise_mv, sampler_jitter_ui;
     Decision decision;
     LatchedMonitor monitor;
     int lane;
@@ -182,31 +181,13 @@ Eye& filled_eye(const Parts& parts, const std::vector<int>& codes) {
         eye_grid = parts.grid;
     }
     const double noise_mv = solve_pulse(parts, codes, space);
-    eye->fill(space.wave, noise_mv, parts.decision);
+    eye->fill(space.wave, {noise_mv, parts.sampler_jitter_ui}, parts.decision);
     return *eye;
 }
 
 void check_ratio(double error_ratio) {
     if (!(error_ratio > 0 && error_ratio <= 0.1))
         throw std::invalid_argument("an error ratio above 0 and at most 0.1 is needed");
-}
-
-// job(i) for i below count, on `threads` threads; each result has its own place, so it does not
-// matter which thread does what.
-template <class Job>
-void for_each_index(std::size_t count, unsigned threads, const Job& job) {
-    std::atomic<std::size_t> next{0};
-    constexpr std::size_t chunk = 64;
-    const auto work = [&] {
-        for (;;) {
-            const std::size_t begin = next.fetch_add(chunk);
-            if (begin >= count) return;
-            for (std::size_t i = begin; i < std::min(count, begin + chunk); ++i) job(i);
-        }
-    };
-    std::vector<std::jthread> helpers;
-    for (unsigned i = 1; i < threads; ++i) helpers.emplace_back(work);
-    work();
 }
 
 }  // namespace
@@ -285,82 +266,6 @@ double Oracle::nyquist_loss_db() const {
 
 const std::string& Oracle::channel_note() const {
     return parts_->note;
-}
-
-std::vector<CodesScore> all_codes(const Oracle& oracle, const Required& required,
-                                  unsigned threads) {
-    check_ratio(required.error_ratio);
-    std::vector<CodesScore> results(oracle.combinations());
-    for_each_index(results.size(), threads, [&](std::size_t i) {
-        CodesScore& result = results[i];
-        result.codes = oracle.codes_at(i);
-        result.margins = oracle.margins(result.codes, required.error_ratio);
-        result.score = score(result.margins, required);
-    });
-    return results;
-}
-
-CodesScore best_codes(const Oracle& oracle, const Required& required, unsigned threads,
-                      double share) {
-    check_ratio(required.error_ratio);
-    const std::size_t count = oracle.combinations();
-    std::vector<double> screened(count);
-    for_each_index(count, threads, [&](std::size_t i) {
-        screened[i] = oracle.screening_score(oracle.codes_at(i), required);
-    });
-    std::vector<std::size_t> order(count);
-    std::iota(order.begin(), order.end(), std::size_t{0});
-    std::stable_sort(order.begin(), order.end(),
-                     [&](std::size_t a, std::size_t b) { return screened[a] > screened[b]; });
-    const auto wanted = static_cast<std::size_t>(std::ceil(share * static_cast<double>(count)));
-    order.resize(std::clamp<std::size_t>(wanted, 1, count));
-    std::sort(order.begin(), order.end());
-
-    std::vector<CodesScore> results(order.size());
-    for_each_index(order.size(), threads, [&](std::size_t i) {
-        results[i].codes = oracle.codes_at(order[i]);
-        results[i].margins = oracle.margins(results[i].codes, required.error_ratio);
-        results[i].score = score(results[i].margins, required);
-    });
-    return *std::max_element(
-        results.begin(), results.end(),
-        [](const CodesScore& a, const CodesScore& b) { return a.score < b.score; });
-}
-
-LatchedEdges latched_reading(const Oracle& oracle, const std::vector<int>& codes,
-                             double error_ratio, std::uint64_t dwell_bits, std::uint64_t seed,
-                             int lane, std::uint64_t ordinal) {
-    double shown = error_ratio;
-    if (dwell_bits > 0) shown = std::max(shown, 1.0 / static_cast<double>(dwell_bits));
-    const Margins truth = oracle.margins(codes, std::min(shown, 0.1));
-    LatchedEdges edges;
-    edges.locked = truth.locked;
-    edges.closed = truth.closed || !truth.locked;
-    if (edges.closed) return edges;
-
-    const LatchedMonitor& monitor = oracle.monitor();
-    std::vector<std::uint64_t> key{static_cast<std::uint64_t>(lane), ordinal};
-    for (const int code : codes) key.push_back(static_cast<std::uint64_t>(code));
-    key.push_back(0);
-    const auto latched = [&](std::uint64_t edge, double value, double sigma, double step, int top) {
-        key.back() = edge;
-        KeyedRandom random(seed, Purpose::latched_edge, key);
-        const double steps = std::round((value + sigma * random.normal()) / step);
-        return static_cast<int>(std::clamp(steps, 0.0, static_cast<double>(top)));
-    };
-    const auto height = [&](std::uint64_t edge, double value_mv) {
-        return latched(edge, value_mv, monitor.height_sigma_mv, monitor.height_step_mv,
-                       monitor.height_steps_max);
-    };
-    const auto width = [&](std::uint64_t edge, double value_ui) {
-        return latched(edge, value_ui, monitor.width_sigma_ui, monitor.width_step_ui,
-                       monitor.width_steps_max);
-    };
-    edges.up = height(0, truth.up_mv);
-    edges.down = height(1, truth.down_mv);
-    edges.left = width(2, truth.left_ui);
-    edges.right = width(3, truth.right_ui);
-    return edges;
 }
 
 }  // namespace lanewright::sim

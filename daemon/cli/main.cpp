@@ -1,0 +1,145 @@
+// The words of the command line, and nothing else: each verb is one function in commands.hpp.
+
+#include <CLI/CLI.hpp>
+#include <cstdio>
+#include <exception>
+#include <string>
+#include <vector>
+
+#include "daemon/cli/commands.hpp"
+#include "daemon/cli/exit_codes.hpp"
+#include "daemon/cli/terminal.hpp"
+#include "daemon/engine/version.hpp"
+#include "drivers/config/json_reader.hpp"
+
+namespace {
+
+using namespace lanewright;
+
+constexpr const char* link_help = "tcp:HOST:PORT or serial:PATH, in place of the board file's link";
+constexpr const char* store_help = "the store's file; default $XDG_STATE_HOME/lanewright/store.db";
+constexpr const char* run_help = "a run's id, the beginning of one, or \"latest\"";
+
+void add_check(CLI::App& app, CheckOptions& options) {
+    CLI::App* verb = app.add_subcommand(
+        "check", "reach a board: identity, scratch write, link errors, round trips; moves no code");
+    verb->add_option("--board", options.board_path, "board file")->required();
+    verb->add_option("--link", options.link, link_help);
+    verb->add_flag("--json", options.json, "one JSON object on stdout");
+}
+
+void add_tune(CLI::App& app, TuneOptions& options) {
+    CLI::App* verb = app.add_subcommand(
+        "tune", "find, verify and set the codes of a board's lanes; resumes an interrupted run");
+    verb->add_option("--board", options.board_path, "board file")->required();
+    verb->add_option("--recipe", options.recipe_path, "recipe file")->required();
+    verb->add_option("--link", options.link, link_help);
+    verb->add_option("--lanes", options.lanes, "such as 0,2-5; default: the recipe's");
+    verb->add_option("--store", options.store_path, store_help);
+    verb->add_option("--seed", options.seed, "of all random choices; default: the recipe's, else 1");
+    verb->add_option("--tag", options.tags, "KEY=VALUE, kept with the run; may be repeated")
+        ->allow_extra_args(false);
+    verb->add_option("--condition", options.condition, "the corner at hand, such as 85C-low");
+    verb->add_option("--threads", options.threads, "threads that strategies compute on")
+        ->check(CLI::Range(1u, 64u));
+    verb->add_flag("--new", options.anew, "begin a new run, even where one could be resumed");
+    verb->add_flag("--dry-run", options.dry_run,
+                   "reach and identify the board, write nothing, show what would be written");
+    verb->add_flag("--json", options.json, "one JSON object on stdout");
+}
+
+void add_store_verbs(CLI::App& app, StoreOptions& runs, StoreOptions& show,
+                     ExportOptions& exported) {
+    CLI::App* list = app.add_subcommand("runs", "list the runs of a store");
+    list->add_option("--store", runs.store_path, store_help);
+    list->add_flag("--json", runs.json, "one JSON array on stdout");
+
+    CLI::App* one = app.add_subcommand("show", "what a run did and found");
+    one->add_option("--store", show.store_path, store_help);
+    one->add_option("run", show.run, run_help)->required();
+    one->add_flag("--json", show.json, "one JSON object on stdout");
+
+    CLI::App* out = app.add_subcommand("export", "a run for other programs");
+    out->add_option("--store", exported.store_path, store_help);
+    out->add_option("run", exported.run, run_help)->required();
+    out->add_option("--as", exported.format,
+                    "json: the result; csv: a row a reading; writes: the register writes")
+        ->required()
+        ->check(CLI::IsMember({"json", "csv", "writes"}));
+    out->add_option("--out", exported.out_path, "file to write; default: stdout");
+}
+
+void add_apply(CLI::App& app, ApplyOptions& options) {
+    CLI::App* verb =
+        app.add_subcommand("apply", "write a run's codes to its board and read them back");
+    verb->add_option("--store", options.store_path, store_help);
+    verb->add_option("--board", options.board_path, "board file")->required();
+    verb->add_option("--link", options.link, link_help);
+    verb->add_option("run", options.run, run_help)->required();
+    verb->add_flag("--former", options.former, "the codes found before the run instead");
+    verb->add_flag("--json", options.json, "one JSON object on stdout");
+}
+
+std::vector<std::string> verb_names(const CLI::App& app) {
+    std::vector<std::string> names;
+    for (const CLI::App* verb : app.get_subcommands({})) names.push_back(verb->get_name());
+    return names;
+}
+
+// CLI11 says of an unknown verb only that one is required.
+int refuse_usage(const CLI::App& app, const CLI::ParseError& error, int count, char** words) {
+    const std::vector<std::string> names = verb_names(app);
+    const std::string first = count > 1 ? words[1] : "";
+    const bool known = std::find(names.begin(), names.end(), first) != names.end();
+    if (first.empty() || known || first.front() == '-') {
+        print_error(std::string("lanewright: ") + error.what());
+        print_error("Try: lanewright " + (known ? first + " " : std::string()) + "--help");
+        return exit_usage;
+    }
+    const std::string near =
+        nearest_word(first, std::vector<std::string_view>(names.begin(), names.end()));
+    print_error("lanewright: there is no verb \"" + first + "\"" +
+                (near.empty() ? "" : "; did you mean \"" + near + "\"?"));
+    print_error("Try: lanewright --help");
+    return exit_usage;
+}
+
+int run(int count, char** words) {
+    CLI::App app{"Lanewright finds, proves and keeps the equalizer codes of receiver lanes.",
+                 "lanewright"};
+    app.set_version_flag("--version", "lanewright " + program_version() + " (" + git_hash() + ")");
+    app.require_subcommand(1);
+    CheckOptions check;
+    TuneOptions tune;
+    StoreOptions runs, show;
+    ExportOptions exported;
+    ApplyOptions apply;
+    add_check(app, check);
+    add_tune(app, tune);
+    add_store_verbs(app, runs, show, exported);
+    add_apply(app, apply);
+    try {
+        app.parse(count, words);
+    } catch (const CLI::Success& answered) {  // --help, --version
+        return app.exit(answered);
+    } catch (const CLI::ParseError& error) {
+        return refuse_usage(app, error, count, words);
+    }
+    if (app.got_subcommand("check")) return run_check(check);
+    if (app.got_subcommand("tune")) return run_tune(tune);
+    if (app.got_subcommand("runs")) return run_runs(runs);
+    if (app.got_subcommand("show")) return run_show(show);
+    if (app.got_subcommand("export")) return run_export(exported);
+    return run_apply(apply);
+}
+
+}  // namespace
+
+int main(int count, char** words) {
+    try {
+        return run(count, words);
+    } catch (const std::exception& error) {
+        std::fprintf(stderr, "lanewright: unexpected: %s. Please report this\n", error.what());
+        return lanewright::exit_internal;
+    }
+}

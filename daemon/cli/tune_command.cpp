@@ -1,0 +1,206 @@
+#include <unistd.h>
+
+#include <algorithm>
+#include <nlohmann/json.hpp>
+
+#include "daemon/cli/board_at_hand.hpp"
+#include "daemon/cli/commands.hpp"
+#include "daemon/cli/dry_run.hpp"
+#include "daemon/cli/exit_codes.hpp"
+#include "daemon/cli/progress.hpp"
+#include "daemon/cli/terminal.hpp"
+#include "daemon/engine/tune.hpp"
+#include "daemon/store/store_error.hpp"
+#include "daemon/views/run_json.hpp"
+#include "daemon/views/run_text.hpp"
+#include "drivers/io/shutdown.hpp"
+
+namespace lanewright {
+
+namespace {
+
+// A word of the command line that cannot be used; exit 64, not a matter of the files.
+class UsageError : public std::runtime_error {
+  public:
+    using std::runtime_error::runtime_error;
+};
+
+Recipe load_checked_recipe(const TuneOptions& options, const BoardFile& board,
+                           Complaints& complaints) {
+    auto recipe = load_recipe(options.recipe_path, complaints);
+    if (!recipe) return {};
+    std::vector<std::string_view> names;
+    for (const StrategyEntry& entry : strategies()) names.push_back(entry.name);
+    check_recipe_against_board(*recipe, board, names, complaints);
+    return std::move(*recipe);
+}
+
+std::map<std::string, std::string> tags_of(const std::vector<std::string>& words) {
+    std::map<std::string, std::string> tags;
+    for (const std::string& word : words) {
+        const std::size_t equals = word.find('=');
+        if (equals == std::string::npos || equals == 0) {
+            throw UsageError("--tag " + word + ": expected KEY=VALUE, such as --tag chip=A7");
+        }
+        if (!tags.emplace(word.substr(0, equals), word.substr(equals + 1)).second) {
+            throw UsageError("--tag " + word + ": this key is given twice");
+        }
+    }
+    return tags;
+}
+
+void require_tags(const Recipe& recipe, const std::map<std::string, std::string>& tags) {
+    for (const std::string& key : recipe.required_tags) {
+        if (!tags.contains(key)) {
+            throw UsageError("the recipe " + recipe.path + " requires the tag \"" + key +
+                             "\"; give it as --tag " + key + "=VALUE");
+        }
+    }
+}
+
+std::vector<std::uint16_t> lanes_of(const TuneOptions& options, const Recipe& recipe,
+                                    const BoardFile& board) {
+    std::vector<std::uint16_t> lanes;
+    if (!options.lanes.empty()) {
+        std::string why;
+        auto parsed = parse_lanes(options.lanes, why);
+        if (!parsed) throw UsageError("--lanes " + options.lanes + ": " + why);
+        lanes = std::move(*parsed);
+    } else if (recipe.lanes) {
+        lanes = *recipe.lanes;
+    } else {
+        for (std::uint16_t lane = 0; lane < board.map.lane_count; ++lane) lanes.push_back(lane);
+    }
+    for (const std::uint16_t lane : lanes) {
+        if (lane >= board.map.lane_count) {
+            throw UsageError("--lanes " + options.lanes + ": board " + board.name +
+                             " has lanes 0 to " + std::to_string(board.map.lane_count - 1));
+        }
+    }
+    return lanes;
+}
+
+struct TuneJob {
+    BoardAtHand at_hand;
+    TuneRequest request;
+};
+
+Result<TuneJob> prepare(const TuneOptions& options) {
+    auto at_hand = take_board(options.board_path, options.link);
+    Complaints complaints;
+    if (!at_hand) {
+        // The user sees what is wrong with both files at once.
+        if (at_hand.error().cause != Cause::bad_config) return at_hand.error();
+        Fault both = at_hand.error();
+        if (!load_recipe(options.recipe_path, complaints)) {
+            both.what += "\n" + fault_of(complaints).what;
+        }
+        return both;
+    }
+    Recipe recipe = load_checked_recipe(options, at_hand->file, complaints);
+    if (complaints.any()) return fault_of(complaints);
+    TuneJob job;
+    job.request.tags = tags_of(options.tags);
+    require_tags(recipe, job.request.tags);
+    job.request.lanes = lanes_of(options, recipe, at_hand->file);
+    job.request.board = at_hand->file;
+    job.request.link = text_of(at_hand->file.link);
+    job.request.seed = options.seed.value_or(recipe.seed.value_or(1));
+    job.request.condition = options.condition;
+    job.request.anew = options.anew;
+    job.request.recipe = std::move(recipe);
+    job.at_hand = std::move(*at_hand);
+    return job;
+}
+
+ProgressPlan progress_plan(const TuneRequest& request) {
+    return {request.lanes, request.recipe.required, request.recipe.budget.standard_readings,
+            request.recipe.budget.bench_s};
+}
+
+void say(const std::string& text) { print_error("lanewright: " + text); }
+
+Task<TuneOutcome> tune_at_hand(TuneJob& job, Store& store, Workers& workers, TimeSource& time,
+                               Stop stop, Observer& progress, RunId& began) {
+    auto board = co_await reach(job.at_hand.file, time);
+    if (!board) co_return board.error();
+    std::function<LinkCounts()> counts = [&board] { return counts_of(**board); };
+    Bench bench{(*board)->lanes(), store,   workers, time, stop, job.at_hand.endpoint.note_path(),
+                {&progress},       counts, say};
+    auto outcome =
+        co_await tune_board(job.request, std::move(bench), store, job.at_hand.endpoint, &began);
+    auto closed = co_await (*board)->close();
+    if (outcome && !closed) co_return closed.error();
+    co_return outcome;
+}
+
+int report_run_fault(const Fault& fault, const RunId& run, bool json) {
+    if (run.empty() || !json) {
+        const int code = report(fault, json);
+        if (!run.empty()) say("run " + run + " is in the store; the same command resumes it");
+        return code;
+    }
+    const int code = exit_code_of(fault.cause);
+    auto object = error_json(fault, code);
+    object["run"] = run;
+    print(object.dump(2, ' ', false, nlohmann::json::error_handler_t::replace) + "\n");
+    print_error("lanewright: " + fault.text());
+    return code;
+}
+
+int report_run(const RunView& view, bool json) {
+    if (json) {
+        print(run_json(view).dump(2, ' ', false, nlohmann::json::error_handler_t::replace) + "\n");
+    } else {
+        print(run_account(view, may_colour(STDOUT_FILENO)));
+    }
+    if (!view.state.ended || view.state.ended->ending != Ending::complete) {
+        say("the run has not finished; the same command resumes it");
+        return exit_try_again;
+    }
+    return all_meet(view) ? exit_ok : exit_not_all_meet;
+}
+
+int tune(const TuneOptions& options) {
+    auto job = prepare(options);
+    if (!job) return report(job.error(), options.json);
+    boost::asio::io_context io;
+    SteadyTimeSource time(io);
+    if (options.dry_run) return dry_run(job->at_hand, job->request, time, options.json);
+
+    Stop stop(io);
+    const ShutdownSignals signals(io, stop);
+    const std::string path =
+        options.store_path.empty() ? default_store_path() : options.store_path;
+    auto store = Store::open(path, time);
+    if (!store) return report(store.error(), options.json);
+    Workers workers(time, options.threads);
+    Progress progress(progress_plan(job->request), is_terminal(STDERR_FILENO));
+    RunId run;
+    auto outcome = run_until_done(
+        time, tune_at_hand(*job, **store, workers, time, stop, progress, run));
+    progress.finish();
+    if (!outcome) return report_run_fault(outcome.error(), run, options.json);
+    const Database database(path, Database::Mode::read_only);
+    return report_run(view_of(database.find_run(outcome->run), database), options.json);
+}
+
+}  // namespace
+
+int run_tune(const TuneOptions& options) {
+    Fault fault;
+    try {
+        return tune(options);
+    } catch (const UsageError& error) {
+        fault.what = error.what();
+        if (options.json) print(error_json(fault, exit_usage).dump(2) + "\n");
+        print_error("lanewright: " + fault.what);
+        return exit_usage;
+    } catch (const StoreError& error) {
+        fault.cause = Cause::io;
+        fault.what = error.what();
+        return report(fault, options.json);
+    }
+}
+
+}  // namespace lanewright

@@ -1,0 +1,146 @@
+#include "daemon/engine/tune.hpp"
+
+#include <unistd.h>
+
+#include <algorithm>
+#include <filesystem>
+#include <utility>
+
+#include "daemon/engine/version.hpp"
+
+namespace lanewright {
+
+namespace {
+
+SourceFile source_of(const std::string& path, const std::string& text) {
+    return {path, sha256_hex(text), text};
+}
+
+std::string absolute(const std::string& path) {
+    std::error_code error;
+    const auto whole = std::filesystem::absolute(path, error);
+    return error ? path : whole.lexically_normal().string();
+}
+
+Manifest manifest_of(const TuneRequest& request, const Identity& identity) {
+    Manifest manifest;
+    manifest.started_ns = utc_now_ns();
+    manifest.run = new_run_id(manifest.started_ns);
+    manifest.zone = local_zone_offset();
+    manifest.version = program_version();
+    manifest.git_hash = git_hash();
+    manifest.build = build_description();
+    manifest.cpu = cpu_description();
+    manifest.host = host_name();
+    manifest.pid = ::getpid();
+    manifest.board_file = source_of(request.board.path, request.board.source);
+    manifest.recipe_file = source_of(request.recipe.path, request.recipe.source);
+    manifest.board = request.board.name;
+    manifest.recipe = request.recipe.name;
+    manifest.link = request.link;
+    manifest.identity = identity;
+    manifest.lanes = request.lanes;
+    manifest.waves = waves_of(request.lanes);
+    manifest.seed = request.seed;
+    manifest.tags = request.tags;
+    manifest.condition = request.condition;
+    return manifest;
+}
+
+// Everything that decisions may depend on, besides the readings, is the same.
+bool same_job(const Manifest& one, const Manifest& other) {
+    return one.board_file.sha256 == other.board_file.sha256 &&
+           one.recipe_file.sha256 == other.recipe_file.sha256 && one.lanes == other.lanes &&
+           one.seed == other.seed && same_board(one.identity, other.identity);
+}
+
+struct Beginning {
+    Manifest manifest;
+    std::vector<StoredEvent> history;
+    bool resumed = false;
+};
+
+// The newest run of the same job that did not come to its end, or a new one.
+Beginning beginning_of(const TuneRequest& request, const Identity& identity, const Store& store) {
+    Beginning out;
+    out.manifest = manifest_of(request, identity);
+    if (request.anew) return out;
+    const std::vector<RunRow> rows = store.runs();
+    for (auto row = rows.rbegin(); row != rows.rend(); ++row) {
+        if (!same_job(row->manifest, out.manifest)) continue;
+        std::vector<StoredEvent> history = store.events(row->id);
+        if (fold(history).complete(row->manifest.lanes)) return out;
+        return {row->manifest, std::move(history), true};
+    }
+    return out;
+}
+
+}  // namespace
+
+Task<void> mend_endpoint(Identity present, Bench bench, Store* store) {
+    auto note = read_note(bench.note_path);
+    if (!note) co_return note.error();
+    if (!*note) co_return Result<void>{};
+    const RestoreNote& left = **note;
+    bool known = false;
+    if (store != nullptr && absolute(left.store) == absolute(store->path())) {
+        const std::vector<RunRow> rows = store->runs();
+        known = std::any_of(rows.begin(), rows.end(),
+                            [&](const RunRow& row) { return row.id == left.run; });
+    }
+    std::string lanes;
+    for (const SavedLane& lane : left.lanes) lanes += " " + std::to_string(number(lane.lane));
+    bench.say("run " + left.run + " left codes to restore; writing lanes" + lanes + " first");
+    const RunId run = left.run;
+    auto settling = settle_note(std::move(**note), std::move(present), bench, known,
+                                "restored at the next contact after run " + run);
+    auto settled = co_await std::move(settling);
+    if (settled) co_return Result<void>{};
+    Fault fault = settled.error();
+    if (fault.hint.empty()) {
+        fault.hint = "Codes that an earlier run left still wait in " + bench.note_path +
+                     "; nothing else is started on this board before they are written";
+    }
+    co_return fault;
+}
+
+Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
+                             const Endpoint& endpoint, RunId* began) {
+    auto identity = co_await bench.reader.identify();
+    if (!identity) co_return identity.error();
+    if (auto mended = co_await mend_endpoint(*identity, bench, &store); !mended) {
+        co_return mended.error();
+    }
+    Beginning beginning = beginning_of(request, *identity, store);
+    const RunId run = beginning.manifest.run;
+    *began = run;
+    std::vector<Event> first;
+    if (beginning.resumed) {
+        bench.say("resuming run " + run + "; --new starts another");
+        first.push_back(RunResumed{::getpid(), "resumed by " + host_name()});
+    } else {
+        if (auto added = co_await store.add_run(beginning.manifest); !added) co_return added.error();
+        bench.say("run " + run);
+        first.push_back(Identified{*identity});
+    }
+    auto stored = co_await bench.journal.append(run, std::move(first));
+    if (!stored) co_return stored.error();
+    std::move(stored->begin(), stored->end(), std::back_inserter(beginning.history));
+    if (auto told = endpoint.describe(absolute(store.path()), run); !told) co_return told.error();
+
+    RunPlan plan;
+    plan.note.endpoint = endpoint.name();
+    plan.note.board = request.board.name;
+    plan.note.identity = *identity;
+    plan.note.run = run;
+    plan.note.store = absolute(store.path());
+    plan.manifest = std::move(beginning.manifest);
+    plan.board = std::move(request.board);
+    plan.recipe = std::move(request.recipe);
+    auto ended = co_await run_board(std::move(plan), std::move(beginning.history), bench);
+    if (!ended) co_return ended.error();
+    TuneOutcome outcome{run, std::move(*ended)};
+    co_return outcome;
+}
+
+}  // namespace lanewright

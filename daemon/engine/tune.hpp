@@ -1,0 +1,40 @@
+#pragma once
+// Purpose:   the whole job on one opened board: identify, mend what an earlier run left, resume or
+//            begin a run, run it.
+// Ownership: refers to the bench; values otherwise.
+// Threads:   the io thread.
+
+#include <map>
+#include <string>
+#include <vector>
+
+#include "daemon/engine/endpoint.hpp"
+#include "daemon/engine/engine.hpp"
+#include "daemon/store/store.hpp"
+
+namespace lanewright {
+
+struct TuneRequest {
+    BoardFile board;
+    Recipe recipe;
+    std::vector<std::uint16_t> lanes;  // ascending
+    std::string link;                  // as text, for the manifest
+    std::uint64_t seed = 1;
+    std::map<std::string, std::string> tags;
+    std::string condition;
+    bool anew = false;  // never resume
+};
+
+struct TuneOutcome {
+    RunId run;
+    RunEnded ended;
+};
+
+// On a fault the run, if it began, is in the store with what it came to; `began` tells its id.
+Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
+                             const Endpoint& endpoint, RunId* began);
+
+// Writes what an earlier run left to restore on this endpoint; nothing to do is success.
+Task<void> mend_endpoint(Identity present, Bench bench, Store* store);
+
+}  // namespace lanewright
