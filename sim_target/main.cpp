@@ -108,8 +108,7 @@ void add_serve(CLI::App& app, ServeOptions& options) {
     CLI::App* serve = app.add_subcommand("serve", "answer as the board on TCP and serial lines");
     serve->add_option("--target", options.target_path, "the target file")->required();
     serve->add_option("--tcp", options.tcp, "HOST:PORT to listen on, port 0 for any; repeatable");
-    serve->add_option("--pty", options.pty,
-                      "path of a link to a new pseudo-terminal; repeatable");
+    serve->add_option("--pty", options.pty, "path of a link to a new pseudo-terminal; repeatable");
 }
 
 void add_truth(CLI::App& app, TruthOptions& options) {

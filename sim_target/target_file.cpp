@@ -97,7 +97,8 @@ PortPair read_pair(const Object& from, std::string_view key, PortPair otherwise)
         return otherwise;
     }
     const IntegerRange ports{.at_least = 1, .at_most = 4};
-    return {static_cast<int>(list.at(0).integer(ports)), static_cast<int>(list.at(1).integer(ports))};
+    return {static_cast<int>(list.at(0).integer(ports)),
+            static_cast<int>(list.at(1).integer(ports))};
 }
 
 TouchstoneChannel read_touchstone_channel(const Object& from, const std::string& folder) {
@@ -196,8 +197,7 @@ TargetFile decode(const Object& top, const std::string& path, const BoardSideRea
     target.name = top.text("name");
     target.seed = static_cast<std::uint64_t>(top.integer_or("seed", 1, {.at_least = 0}));
     target.time_scale = top.number_or("time_scale", 1, {.at_least = 0, .at_most = 1000});
-    target.grid.bit_rate_hz =
-        top.number("bit_rate_gbps", {.at_least = 0.1, .at_most = 200}) * 1e9;
+    target.grid.bit_rate_hz = top.number("bit_rate_gbps", {.at_least = 0.1, .at_most = 200}) * 1e9;
     target.transmitter = read_transmitter(top.object("transmitter"));
     Line shared;
     if (const auto line = top.object_if("line")) shared = read_line(*line, shared);

@@ -20,7 +20,7 @@
 namespace lanewright::sim {
 
 struct Transmitter {
-    double swing_mv = 800;  // differential, peak to peak, into a matched load
+    double swing_mv = 800;   // differential, peak to peak, into a matched load
     double rise_s = 12e-12;  // 20 % to 80 % of the Gaussian edge filter; 0: none
     double source_ohm = 50;  // each half
     double pad_f = 0;
@@ -67,7 +67,7 @@ struct TargetFile {
     double sampler_jitter_ui = 0;  // random, rms
     Spread spread;
     LatchedMonitor monitor;
-    Required required;  // what `truth` scores by where the command line names nothing
+    Required required;             // what `truth` scores by where the command line names nothing
     std::vector<int> reset_codes;  // r1, c1, r2, c2
     std::vector<LaneChannel> lanes;
 };

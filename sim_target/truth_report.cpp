@@ -63,7 +63,9 @@ Json as_json(const CodesScore& result) {
         codes[std::string(dimension_names()[i])] = result.codes[i];
     const Margins& m = result.margins;
     return Json{{"codes", codes},
-                {"status", !m.locked ? "no_lock" : m.closed ? "closed" : "open"},
+                {"status", !m.locked  ? "no_lock"
+                           : m.closed ? "closed"
+                                      : "open"},
                 {"up_mv", m.up_mv},
                 {"down_mv", m.down_mv},
                 {"left_ui", m.left_ui},
@@ -83,8 +85,11 @@ void write_csv(std::ostream& out, std::span<const CodesScore> results) {
         for (const int code : result.codes) out << code << ',';
         const Margins& m = result.margins;
         std::snprintf(line.data(), line.size(), "%s,%.9g,%.9g,%.9g,%.9g,%.9g,%.9g,%.9g\n",
-                      !m.locked ? "no_lock" : m.closed ? "closed" : "open", m.up_mv, m.down_mv,
-                      m.left_ui, m.right_ui, result.score, m.centre_error_ratio, m.noise_mv);
+                      !m.locked  ? "no_lock"
+                      : m.closed ? "closed"
+                                 : "open",
+                      m.up_mv, m.down_mv, m.left_ui, m.right_ui, result.score, m.centre_error_ratio,
+                      m.noise_mv);
         out << line.data();
     }
 }
@@ -106,8 +111,10 @@ void write_text(std::ostream& out, const TruthHeading& heading,
         }
         const Margins& m = result.margins;
         std::snprintf(line.data(), line.size(), " %8.2f %8.2f %8.4f %8.4f %8.4f  %13.3g%s\n",
-                      m.up_mv, m.down_mv, m.left_ui, m.right_ui, result.score,
-                      m.centre_error_ratio, !m.locked ? "  no lock" : m.closed ? "  closed" : "");
+                      m.up_mv, m.down_mv, m.left_ui, m.right_ui, result.score, m.centre_error_ratio,
+                      !m.locked  ? "  no lock"
+                      : m.closed ? "  closed"
+                                 : "");
         out << line.data();
     }
 }

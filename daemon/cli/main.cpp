@@ -8,6 +8,7 @@
 
 #include "daemon/cli/commands.hpp"
 #include "daemon/cli/exit_codes.hpp"
+#include "daemon/cli/log.hpp"
 #include "daemon/cli/terminal.hpp"
 #include "daemon/engine/version.hpp"
 #include "drivers/config/json_reader.hpp"
@@ -125,11 +126,12 @@ int run(int count, char** words) {
     } catch (const CLI::ParseError& error) {
         return refuse_usage(app, error, count, words);
     }
-    if (app.got_subcommand("check")) return run_check(check);
-    if (app.got_subcommand("tune")) return run_tune(tune);
     if (app.got_subcommand("runs")) return run_runs(runs);
     if (app.got_subcommand("show")) return run_show(show);
     if (app.got_subcommand("export")) return run_export(exported);
+    open_log(count, words);  // of the verbs that talk to a board
+    if (app.got_subcommand("check")) return run_check(check);
+    if (app.got_subcommand("tune")) return run_tune(tune);
     return run_apply(apply);
 }
 

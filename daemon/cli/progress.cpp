@@ -5,6 +5,7 @@
 #include <cstdio>
 
 #include "adapt/search/score.hpp"
+#include "daemon/cli/log.hpp"
 
 namespace lanewright {
 
@@ -64,7 +65,9 @@ void Progress::take(const StoredEvent& stored) {
 }
 
 void Progress::say(std::uint16_t lane, const std::string& text) const {
-    if (!terminal_) std::fprintf(stderr, "lane %u: %s\n", static_cast<unsigned>(lane), text.c_str());
+    const std::string line = "lane " + std::to_string(lane) + ": " + text;
+    log_note(line);
+    if (!terminal_) std::fprintf(stderr, "%s\n", line.c_str());
 }
 
 // Bench time that the budget still allows, as declared; the lanes run side by side.

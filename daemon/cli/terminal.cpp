@@ -8,6 +8,7 @@
 #include <string_view>
 
 #include "daemon/cli/exit_codes.hpp"
+#include "daemon/cli/log.hpp"
 #include "daemon/views/run_json.hpp"
 
 namespace lanewright {
@@ -27,6 +28,7 @@ void print(const std::string& text) {
 }
 
 void print_error(const std::string& text) {
+    log_note(text);
     std::fprintf(stderr, "%s\n", text.c_str());
     std::fflush(stderr);
 }

@@ -13,7 +13,7 @@ bool may_colour(int descriptor);
 bool is_terminal(int descriptor);
 
 void print(const std::string& text);          // stdout
-void print_error(const std::string& text);    // stderr, with a newline
+void print_error(const std::string& text);    // stderr, with a newline; and the log
 
 // The fault as the verb's last word: JSON object on stdout or a line on stderr; its exit code.
 int report(const Fault& fault, bool json);

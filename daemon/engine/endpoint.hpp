@@ -30,7 +30,7 @@ class Endpoint {
     // file tells, or the one of this state folder.
     const std::string& note_path() const { return note_path_; }
 
-    // Tells others what the holder does.
+    // Tells others what the holder does, and whether codes wait to be restored.
     Result<void> describe(const std::string& store, const std::string& run) const;
 
   private:

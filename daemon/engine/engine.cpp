@@ -76,6 +76,7 @@ class Engine {
     RunState state_;
     std::map<std::uint16_t, LaneJob> jobs_;
     TimePoint started_{};
+    std::uint64_t resets_told_ = 0;
     bool failed_ = false;  // a lane met what ends the run, or the store does
     std::string unsettled_;  // what could not be put where it belongs, for the run's last words
 };
@@ -170,6 +171,11 @@ Task<bool> Engine::measure(Lane lane, DoMeasure what) {
 
 // After a reset every lane of the board holds its reset codes, those that had been settled too.
 void Engine::board_was_reset() {
+    const std::uint64_t resets = bench_.link_counts().resets;
+    if (resets != resets_told_) {
+        resets_told_ = resets;
+        bench_.say("the board has reset; lanes outside this run hold their reset codes now");
+    }
     bool changed = false;
     for (auto& [number_of_lane, lane] : state_.lanes) {
         if (!lane.saved || lane.moved) continue;

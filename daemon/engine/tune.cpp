@@ -138,7 +138,9 @@ Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
     plan.board = std::move(request.board);
     plan.recipe = std::move(request.recipe);
     auto ended = co_await run_board(std::move(plan), std::move(beginning.history), bench);
+    auto told_again = endpoint.describe(absolute(store.path()), run);
     if (!ended) co_return ended.error();
+    if (!told_again) co_return told_again.error();
     TuneOutcome outcome{run, std::move(*ended)};
     co_return outcome;
 }

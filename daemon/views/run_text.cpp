@@ -214,39 +214,55 @@ std::string lane_writes(const RunView& view, std::uint16_t lane, const Codes& co
     return out;
 }
 
+// "lane 3: r1=4 ... became r1=9 ...; better by ...; the lower limit ..."
+std::string lane_sentence(const RunView& view, const LaneResult& lane) {
+    std::string out = "lane " + std::to_string(lane.lane) + ": ";
+    if (lane.former) out += codes_text(view.space, *lane.former, ' ');
+    if (lane.decided && lane.former) {
+        out += *lane.decided == *lane.former ? " kept" : " became " +
+                                                             codes_text(view.space, *lane.decided, ' ');
+    }
+    out += "; " + (lane.reason.empty() ? std::string("not finished") : lane.reason);
+    if (lane.judgement && !lane.judgement->reason.empty()) out += "; " + lane.judgement->reason;
+    return out;
+}
+
 }  // namespace
 
 std::string run_table(const RunView& view, bool colour) {
+    // The codes have their column where they fit; the account below the table has them anyway.
+    constexpr std::size_t codes_width = 11;
     std::string codes_head;
     for (const Dimension& dimension : view.space.dimensions()) {
         codes_head += (codes_head.empty() ? "" : "/") + dimension.name;
     }
-    std::string out = format("%4s  %-9s %-9s %-13s %6s %6s  %5s %5s %-10s %4s\n", "lane", "verdict",
-                             "outcome", codes_head.substr(0, 13).c_str(), "height", "width", "score",
-                             "score", "95 %", "read");
-    out += format("%4s  %-9s %-9s %-13s %6s %6s  %5s %5s %-10s %4s\n", "", "", "", "", "mV", "UI",
-                  "before", "after", "limits", "ings");
+    const bool codes_fit = codes_head.size() <= codes_width;
+    const auto codes_cell = [&](const std::string& text) {
+        return codes_fit ? format(" %-11s", text.c_str()) : std::string();
+    };
+    std::string out = format("%4s  %-9s %-9s", "lane", "verdict", "outcome") +
+                      codes_cell(codes_head) +
+                      format(" %6s %6s %6s %5s %-10s %3s\n", "height", "width", "score", "score",
+                             "95 %", "n");
+    out += format("%4s  %-9s %-9s", "", "", "") + codes_cell("") +
+           format(" %6s %6s %6s %5s %-10s\n", "mV", "UI", "before", "after", "limits");
     for (const LaneResult& lane : lane_results(view)) {
         out += format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
-               format(" %-9s %-13s %6s %6s %6s %5s %-10s %4zu\n",
-                      lane.outcome ? name_of(*lane.outcome) : "-",
-                      lane.decided ? codes_text(view.space, *lane.decided, '/').c_str() : "-",
+               format(" %-9s", lane.outcome ? name_of(*lane.outcome) : "-") +
+               codes_cell(lane.decided ? codes_text(view.space, *lane.decided, '/') : "-") +
+               format(" %6s %6s %6s %5s %-10s %3zu\n",
                       number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
                       number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
                       score_text(lane.before).c_str(), score_text(lane.after).c_str(),
                       limits_text(lane.after).c_str(), lane.reading_count);
     }
-    return out;
+    return out + "n: readings, before and after included; void ones not\n";
 }
 
 std::string run_account(const RunView& view, bool colour) {
     std::string out = head_of(view) + "\n" + run_table(view, colour) + "\n";
     for (const LaneResult& lane : lane_results(view)) {
-        std::string text = "lane " + std::to_string(lane.lane) + ": ";
-        if (lane.former) text += "was " + codes_text(view.space, *lane.former, ' ') + ". ";
-        text += lane.reason.empty() ? "not finished." : lane.reason;
-        if (lane.judgement && !lane.judgement->reason.empty()) text += " " + lane.judgement->reason;
-        out += wrapped(text, "  ");
+        out += wrapped(lane_sentence(view, lane), "  ");
         for (const std::string& note : lane.notes) out += wrapped("- " + note, "    ");
     }
     const LinkCounts& link = view.state.link;

@@ -44,6 +44,10 @@ Fault bad_config(const BoardFile& file, std::string what, std::string hint) {
     return fault;
 }
 
+// Parameters of coroutines are values: references of a caller may be gone when one goes on.
+Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link, TimeSource* time,
+                                      std::optional<std::uint32_t> session_number);
+
 }  // namespace
 
 Board::Board(BoardFile file, std::unique_ptr<Link> link, std::unique_ptr<Dialect> dialect,
@@ -58,6 +62,13 @@ Board::Board(BoardFile file, std::unique_ptr<Link> link, std::unique_ptr<Dialect
 Task<std::unique_ptr<Board>> open_board(BoardFile file, std::unique_ptr<Link> link,
                                         TimeSource& time,
                                         std::optional<std::uint32_t> session_number) {
+    return open_one(std::move(file), std::move(link), &time, session_number);
+}
+
+namespace {
+
+Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link, TimeSource* time,
+                                      std::optional<std::uint32_t> session_number) {
     const DialectEntry* entry = find_dialect(file.dialect.name);
     if (entry == nullptr) {
         std::string known;
@@ -74,11 +85,13 @@ Task<std::unique_ptr<Board>> open_board(BoardFile file, std::unique_ptr<Link> li
     DialectOptions options;
     options.session = session_number.value_or(std::random_device{}());
     options.answer_time = nanoseconds_of(file.dialect.deadline_ms * 1e-3);
-    auto board = std::make_unique<Board>(std::move(file), std::move(link), entry->make(options),
-                                         time);
+    auto board =
+        std::make_unique<Board>(std::move(file), std::move(link), entry->make(options), *time);
     const Result<void> opened = co_await board->open();
     if (!opened) co_return opened.error();
     co_return std::move(board);
 }
+
+}  // namespace
 
 }  // namespace lanewright

@@ -47,7 +47,8 @@ Result<MarginWanted> told_to_monitor(const BoardFile& board, const Request& requ
     MarginWanted told = *wanted;
     told.dwell_bits = dwelt_bits(board, wanted->dwell_bits);
     if (uses(board.monitor.sequence, Parameter::ratio_exponent)) {
-        told.error_ratio = std::pow(10.0, -static_cast<double>(ratio_exponent_of(told.error_ratio)));
+        told.error_ratio =
+            std::pow(10.0, -static_cast<double>(ratio_exponent_of(told.error_ratio)));
     }
     // A relative 1e-9 forgives the rounding of powers of ten.
     const double lowest = board.monitor.lowest_error_ratio * (1 - 1e-9);

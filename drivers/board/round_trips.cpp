@@ -6,8 +6,8 @@
 namespace lanewright {
 
 void RoundTrips::add(std::chrono::nanoseconds time) {
-    const auto us = static_cast<std::uint64_t>(
-        std::max<std::int64_t>(0, std::chrono::duration_cast<std::chrono::microseconds>(time).count()));
+    const auto us = static_cast<std::uint64_t>(std::max<std::int64_t>(
+        0, std::chrono::duration_cast<std::chrono::microseconds>(time).count()));
     bins_[std::min<std::size_t>(static_cast<std::size_t>(std::bit_width(us)), bin_count - 1)] += 1;
     shortest_ = count_ == 0 ? time : std::min(shortest_, time);
     longest_ = std::max(longest_, time);

@@ -17,12 +17,16 @@ std::chrono::microseconds microseconds_of(double ms) {
 std::uint32_t value_of(const Operand& operand, const SequenceValues& values) {
     if (const auto* plain = std::get_if<std::uint32_t>(&operand)) return *plain;
     switch (std::get<Parameter>(operand)) {
-        case Parameter::ordinal: return values.ordinal;
-        case Parameter::dwell_log2: return dwell_log2_of(values.dwell_bits);
+        case Parameter::ordinal:
+            return values.ordinal;
+        case Parameter::dwell_log2:
+            return dwell_log2_of(values.dwell_bits);
         case Parameter::dwell_bits_low:
             return static_cast<std::uint32_t>(values.dwell_bits & 0xFFFFFFFFu);
-        case Parameter::dwell_bits_high: return static_cast<std::uint32_t>(values.dwell_bits >> 32);
-        case Parameter::ratio_exponent: return ratio_exponent_of(values.error_ratio);
+        case Parameter::dwell_bits_high:
+            return static_cast<std::uint32_t>(values.dwell_bits >> 32);
+        case Parameter::ratio_exponent:
+            return ratio_exponent_of(values.error_ratio);
     }
     return 0;
 }
@@ -91,7 +95,8 @@ Result<void> Compiled::add_step(const RegisterMap& map,
 Result<void> Compiled::add_codes(const RegisterMap& map,
                                  const std::vector<DimensionDescription>& dimensions, Lane lane,
                                  const SequenceValues& values) {
-    if (!values.codes) return not_allowed("this sequence writes codes and none were given", {}, lane);
+    if (!values.codes)
+        return not_allowed("this sequence writes codes and none were given", {}, lane);
     const std::size_t before = batch_.size();
     const Result<void> added = map.write_codes(batch_, lane, *values.codes, values.standing);
     if (!added) return added;

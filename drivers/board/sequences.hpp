@@ -79,7 +79,7 @@ class Compiled {
     Batch batch_;
     std::vector<NamedRead> reads_;
     std::vector<CombineStep> combines_;
-    std::vector<CodeWrite> code_writes_;  // by dimension
+    std::vector<CodeWrite> code_writes_;            // by dimension
     std::map<std::size_t, LockMissed> lock_waits_;  // by operation
     std::size_t sequences_added_ = 0;
 };

@@ -57,7 +57,9 @@ TimePoint Session::end_of_patience() const {
     return state_ == State::ready ? TimePoint::max() : not_ready_since_ + options_.patience;
 }
 
-bool Session::patience_is_over() const { return time_.now() >= end_of_patience(); }
+bool Session::patience_is_over() const {
+    return time_.now() >= end_of_patience();
+}
 
 // For a greeting and the identity, with every attempt of both.
 std::chrono::nanoseconds Session::greeting_time() const {
@@ -161,8 +163,9 @@ Task<void> Session::wait_for_greeting(TimePoint deadline) {
                                                        dialect_->traits().name + " greeting on " +
                                                        link_->traits().name);
             const std::uint64_t bad = dialect_->counts().bad_frames;
-            fault.hint = bad > 0 ? std::to_string(bad) + " frames came that cannot be read: check "
-                                   "the dialect, the baud rate and what else uses the line"
+            fault.hint = bad > 0 ? std::to_string(bad) +
+                                       " frames came that cannot be read: check "
+                                       "the dialect, the baud rate and what else uses the line"
                                  : "Check power, cable, and the link in the board file";
             fault.waited = time_.now() - began;
             co_return fault;
@@ -266,7 +269,9 @@ Task<void> Session::write_link() {
         if (woke == Woke::stopped) co_return Result<void>{};
         while (!to_send_.empty() && link_->is_open()) {
             writing_ = true;
-            Result<void> written = co_await link_->write(std::exchange(to_send_, {}));
+            Bytes bytes;
+            bytes.swap(to_send_);
+            Result<void> written = co_await link_->write(std::move(bytes));
             writing_ = false;
             if (!written) link_->close();  // the reader sees it and says so
             event_.raise();

@@ -31,25 +31,25 @@
 namespace lanewright {
 
 struct SessionOptions {
-    std::string board;                                                 // for messages
+    std::string board;                                                      // for messages
     std::chrono::nanoseconds answer_time = std::chrono::milliseconds(400);  // for one attempt
-    int attempts = 5;                                                  // in all
+    int attempts = 5;                                                       // in all
     std::chrono::nanoseconds patience = std::chrono::seconds(20);  // with a lost link or silence
     std::chrono::nanoseconds open_time = std::chrono::seconds(5);  // for opening the link once
 };
 
 struct SessionStatistics {
-    std::uint64_t frames = 0;        // sent and received
-    std::uint64_t bad_frames = 0;    // received and dropped
-    std::uint64_t retries = 0;       // attempts after the first
-    std::uint64_t reconnects = 0;    // links opened after the first
-    std::uint64_t resets = 0;        // of the board, noticed by its boot number
+    std::uint64_t frames = 0;            // sent and received
+    std::uint64_t bad_frames = 0;        // received and dropped
+    std::uint64_t retries = 0;           // attempts after the first
+    std::uint64_t reconnects = 0;        // links opened after the first
+    std::uint64_t resets = 0;            // of the board, noticed by its boot number
     std::uint32_t board_bad_frames = 0;  // as the board counted them, at the last greeting
 };
 
 // What tells the right board from another one.
 struct IdentityProbe {
-    Batch batch;  // empty: any board will do
+    Batch batch;                                           // empty: any board will do
     std::function<Result<void>(const BatchReply&)> check;  // Cause::wrong_board with both values
 };
 

@@ -4,6 +4,7 @@
 // Threads:   io thread.
 
 #include <optional>
+#include <utility>
 
 #include "drivers/board/session.hpp"
 

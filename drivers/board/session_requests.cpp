@@ -79,6 +79,8 @@ Session::RequestPtr Session::submit(Lane lane, Batch batch, Urgency urgency) {
     request->urgency = urgency;
     request->submitted = time_.now();
     requests_[static_cast<std::uint64_t>(request->ticket)] = request;
+    // A loss that the reader has yet to notice: what is not sent must not count as sent.
+    if (!link_->is_open()) dialect_->link_lost();
     dialect_->submit(request->ticket, request->batch, urgency);
     carry_out(dialect_->step({}, time_.now()));
     return request;

@@ -47,8 +47,8 @@ struct Finished {
 };
 
 struct BoardSaid {
-    bool greeted = false;          // the board answered the greeting; admit() is awaited
-    bool reset = false;            // its boot number is another than before
+    bool greeted = false;  // the board answered the greeting; admit() is awaited
+    bool reset = false;    // its boot number is another than before
     std::uint32_t boot = 0;
     std::uint32_t bad_frames = 0;  // as the board counts them, where it does
 };
@@ -56,11 +56,11 @@ struct BoardSaid {
 // What is to be done after an event.
 struct DialectStep {
     std::vector<std::byte> send;
-    std::vector<Ticket> started;           // first sent with these bytes
+    std::vector<Ticket> started;  // first sent with these bytes
     std::vector<Finished> finished;
     std::optional<BoardSaid> board_said;
-    std::optional<Fault> hopeless;         // this board cannot be spoken to; nothing more is sent
-    std::optional<TimePoint> call_again;   // step() is to be called then, if not before
+    std::optional<Fault> hopeless;        // this board cannot be spoken to; nothing more is sent
+    std::optional<TimePoint> call_again;  // step() is to be called then, if not before
 };
 
 struct DialectCounts {
@@ -107,7 +107,7 @@ class Dialect {
 };
 
 struct DialectOptions {
-    std::uint32_t session = 1;                            // random, chosen by the caller
+    std::uint32_t session = 1;  // random, chosen by the caller
     std::chrono::nanoseconds answer_time = std::chrono::milliseconds(400);  // for one greeting
 };
 

@@ -23,7 +23,9 @@ Fault fault_of(Cause cause, std::string what) {
     return fault;
 }
 
-std::uint16_t tag_of(std::uint32_t session) { return static_cast<std::uint16_t>(session & 0xFFFF); }
+std::uint16_t tag_of(std::uint32_t session) {
+    return static_cast<std::uint16_t>(session & 0xFFFF);
+}
 
 // Another number whose low half, the tag, is another too.
 std::uint32_t session_after(std::uint32_t session) {
@@ -32,12 +34,18 @@ std::uint32_t session_after(std::uint32_t session) {
 
 const char* text_of(Error error) {
     switch (error) {
-        case Error::wrong_boot: return "the board's boot number is another";
-        case Error::no_session: return "the board knows no session";
-        case Error::malformed: return "the board calls the batch malformed";
-        case Error::beyond_limit: return "the board calls the batch beyond its limits";
-        case Error::slot_busy: return "the board's slot is busy";
-        case Error::behind: return "the board's slot is ahead";
+        case Error::wrong_boot:
+            return "the board's boot number is another";
+        case Error::no_session:
+            return "the board knows no session";
+        case Error::malformed:
+            return "the board calls the batch malformed";
+        case Error::beyond_limit:
+            return "the board calls the batch beyond its limits";
+        case Error::slot_busy:
+            return "the board's slot is busy";
+        case Error::behind:
+            return "the board's slot is ahead";
     }
     return "the board refused the batch";
 }
@@ -111,7 +119,9 @@ void Framed::link_reopened() {
     begin_greeting(false);
 }
 
-void Framed::link_lost() { state_ = State::closed; }
+void Framed::link_lost() {
+    state_ = State::closed;
+}
 
 void Framed::begin_greeting(bool new_session) {
     if (new_session) {
@@ -240,8 +250,9 @@ DialectStep Framed::admit(TimePoint now) {
 DialectStep Framed::again(Ticket ticket, TimePoint now) {
     DialectStep step;
     const auto request = find(ticket);
-    const bool may_go = state_ == State::open || (state_ == State::greeted && request != requests_.end() &&
-                                                  request->urgency == Urgency::identity);
+    const bool may_go =
+        state_ == State::open || (state_ == State::greeted && request != requests_.end() &&
+                                  request->urgency == Urgency::identity);
     if (request != requests_.end() && request->slot && may_go) {
         send_payload(request->payload, true, step, now);
     }
@@ -288,9 +299,9 @@ void Framed::take_answer(const HelloAnswer& answer, DialectStep& step) {
     const unsigned age = static_cast<std::uint8_t>(last_try_ - answer.try_number);
     if (state_ != State::greeting || answer.session != session_ || age >= tries_) return;
     if (answer.version != version) {
-        step.hopeless = fault_of(Cause::refused, "the board speaks version " +
-                                                     std::to_string(answer.version) +
-                                                     " of the framed dialect, this host version 1");
+        step.hopeless =
+            fault_of(Cause::refused, "the board speaks version " + std::to_string(answer.version) +
+                                         " of the framed dialect, this host version 1");
         state_ = State::closed;
         return;
     }
@@ -323,9 +334,9 @@ void Framed::take_limits(const HelloAnswer& answer) {
 // Both ends begin anew; whatever was asked for is over.
 void Framed::board_was_reset(std::uint32_t boot, DialectStep& step) {
     for (const Request& request : requests_) {
-        Fault fault = fault_of(Cause::board_reset,
-                               "the board was reset: its boot number was " + std::to_string(boot_) +
-                                   " and is " + std::to_string(boot));
+        Fault fault = fault_of(Cause::board_reset, "the board was reset: its boot number was " +
+                                                       std::to_string(boot_) + " and is " +
+                                                       std::to_string(boot));
         if (!request.payload.empty()) fault.sent_hex = hex_of(frame_of(request.payload));
         step.finished.push_back({request.ticket, std::move(fault)});
     }

@@ -12,8 +12,8 @@
 #include <vector>
 
 #include "drivers/dialects/dialect.hpp"
-#include "drivers/dialects/frames.hpp"
 #include "drivers/dialects/framed_messages.hpp"
+#include "drivers/dialects/frames.hpp"
 
 namespace lanewright::framed {
 

@@ -99,14 +99,22 @@ Head decode_head(ByteReader& in) {
 
 std::optional<Outcome> outcome_of(std::uint8_t code) {
     switch (code) {
-        case 0: return Outcome::done;
-        case 1: return Outcome::no_register;
-        case 2: return Outcome::no_access;
-        case 3: return Outcome::beyond_width;
-        case 4: return Outcome::wait_expired;
-        case 5: return Outcome::not_as_written;
-        case 6: return Outcome::bus_error;
-        default: return std::nullopt;
+        case 0:
+            return Outcome::done;
+        case 1:
+            return Outcome::no_register;
+        case 2:
+            return Outcome::no_access;
+        case 3:
+            return Outcome::beyond_width;
+        case 4:
+            return Outcome::wait_expired;
+        case 5:
+            return Outcome::not_as_written;
+        case 6:
+            return Outcome::bus_error;
+        default:
+            return std::nullopt;
     }
 }
 

@@ -55,8 +55,8 @@ void FrameReader::end_of_frame(std::vector<std::vector<std::byte>>& payloads) {
         const std::size_t length = body && body->size() > crc_bytes ? body->size() - crc_bytes : 0;
         const auto payload = length == 0 ? std::span<const std::byte>{}
                                          : std::span<const std::byte>(*body).first(length);
-        if (length > 0 &&
-            ByteReader(std::span<const std::byte>(*body).subspan(length)).u32() == crc32c(payload)) {
+        if (length > 0 && ByteReader(std::span<const std::byte>(*body).subspan(length)).u32() ==
+                              crc32c(payload)) {
             ++good_;
             payloads.emplace_back(payload.begin(), payload.end());
         } else {

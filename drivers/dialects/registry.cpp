@@ -19,7 +19,9 @@ constexpr std::array all_dialects{
 
 }  // namespace
 
-std::span<const DialectEntry> dialects() { return all_dialects; }
+std::span<const DialectEntry> dialects() {
+    return all_dialects;
+}
 
 const DialectEntry* find_dialect(std::string_view name) {
     const auto found = std::find_if(all_dialects.begin(), all_dialects.end(),

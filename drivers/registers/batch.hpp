@@ -68,12 +68,12 @@ class Batch {
 
 enum class Outcome : std::uint8_t {
     done,
-    no_register,    // nothing at that address
-    no_access,      // the register cannot be read, or cannot be written
-    beyond_width,   // value or mask has bits that the register lacks
-    wait_expired,   // the wait's time was over without its condition
-    not_as_written, // read back otherwise than written
-    bus_error       // the board could not reach the register
+    no_register,     // nothing at that address
+    no_access,       // the register cannot be read, or cannot be written
+    beyond_width,    // value or mask has bits that the register lacks
+    wait_expired,    // the wait's time was over without its condition
+    not_as_written,  // read back otherwise than written
+    bus_error        // the board could not reach the register
 };
 
 struct BatchReply {

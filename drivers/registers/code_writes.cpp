@@ -109,11 +109,10 @@ Result<std::vector<std::size_t>> RegisterMap::order_of_writes(Lane lane, const C
         }
     }
     if (all > 0 && reached_by[all] == not_reached) {
-        return not_allowed("every order of writes from " +
-                               text_of(dimension_names_, standing.value) + " to " +
-                               text_of(dimension_names_, wanted.value) +
-                               " passes a forbidden combination",
-                           {}, lane);
+        return not_allowed(
+            "every order of writes from " + text_of(dimension_names_, standing.value) + " to " +
+                text_of(dimension_names_, wanted.value) + " passes a forbidden combination",
+            {}, lane);
     }
     std::vector<std::size_t> backwards;
     for (std::size_t subset = all; subset != 0;) {

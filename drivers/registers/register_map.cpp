@@ -24,10 +24,14 @@ std::uint32_t all_bits(unsigned width_bits) {
 
 const char* role_name(Role role) {
     switch (role) {
-        case Role::none: return "none";
-        case Role::tuned: return "tuned";
-        case Role::control: return "control";
-        case Role::scratch: return "scratch";
+        case Role::none:
+            return "none";
+        case Role::tuned:
+            return "tuned";
+        case Role::control:
+            return "control";
+        case Role::scratch:
+            return "scratch";
     }
     return "none";
 }
@@ -105,8 +109,8 @@ Result<FieldPlace> RegisterMap::place(Lane lane, const FieldName& name) const {
     FieldPlace place{reg->address, field->mask(), field->low_bit, reg->width_bits};
     if (reg->per_lane) {
         if (number(lane) >= description_.lane_count) {
-            return not_allowed("the board has no lane " + std::to_string(number(lane)) + ", only 0 to " +
-                                   std::to_string(description_.lane_count - 1),
+            return not_allowed("the board has no lane " + std::to_string(number(lane)) +
+                                   ", only 0 to " + std::to_string(description_.lane_count - 1),
                                name.text(), lane);
         }
         place.address += description_.lane_base + number(lane) * description_.lane_stride;
@@ -152,10 +156,10 @@ Result<void> RegisterMap::write_declared(Batch& batch, Lane lane, const FieldNam
     const FieldDescription& field = *find(name);
     const bool declared = field.role == Role::control && declared_.contains(name);
     if ((!declared && field.role != Role::scratch) || field.access == Access::read_only) {
-        return not_allowed(name.text() + " may not be written: its role is " +
-                               role_name(field.role) + (field.role == Role::control
-                                   ? " and no sequence of the board file writes it" : ""),
-                           name.text(), lane);
+        return not_allowed(
+            name.text() + " may not be written: its role is " + role_name(field.role) +
+                (field.role == Role::control ? " and no sequence of the board file writes it" : ""),
+            name.text(), lane);
     }
     if (const Result<void> limits = check_limits(lane, name, field, value); !limits) return limits;
     add_write(batch, *at, field, value);
@@ -178,7 +182,8 @@ Result<void> RegisterMap::wait_until(Batch& batch, Lane lane, const FieldName& n
     }
     if (timeout.count() < 0 || timeout > longest_time) {
         return not_allowed("a wait for " + name.text() + " of " + std::to_string(timeout.count()) +
-                               " us is outside 0 to " + std::to_string(longest_time.count()) + " us",
+                               " us is outside 0 to " + std::to_string(longest_time.count()) +
+                               " us",
                            name.text(), lane);
     }
     batch.operations_.push_back(
@@ -235,15 +240,18 @@ Fault RegisterMap::fault_at(const Operation& operation, std::optional<std::uint3
             fault.cause = Cause::not_accepted;
             fault.what = fault.reg + " was written as " + hex(target.value) + " and read back as " +
                          seen + " (mask " + hex(target.mask) + ")";
-            fault.hint = "Check the field's bits and access in the board file, and whether "
-                         "something else writes the register";
+            fault.hint =
+                "Check the field's bits and access in the board file, and whether "
+                "something else writes the register";
             break;
         case Outcome::wait_expired:
             fault.cause = Cause::wait_expired;
-            fault.what = where + " did not become " + hex(target.value) + " in time, it was " + seen +
-                         " (mask " + hex(target.mask) + ")";
+            fault.what = where + " did not become " + hex(target.value) + " in time, it was " +
+                         seen + " (mask " + hex(target.mask) + ")";
             break;
-        case Outcome::no_register: fault.what = "the board has no register " + where; break;
+        case Outcome::no_register:
+            fault.what = "the board has no register " + where;
+            break;
         case Outcome::no_access:
             fault.what = "the board does not allow that access to " + where;
             break;
@@ -251,16 +259,19 @@ Fault RegisterMap::fault_at(const Operation& operation, std::optional<std::uint3
             fault.what = "value or mask has bits that the board's register lacks: " + where;
             fault.hint = "Check the register's width in the board file";
             break;
-        case Outcome::bus_error: fault.what = "the board could not reach " + where; break;
-        case Outcome::done: fault.what = "the reply lacks the result of " + where; break;
+        case Outcome::bus_error:
+            fault.what = "the board could not reach " + where;
+            break;
+        case Outcome::done:
+            fault.what = "the reply lacks the result of " + where;
+            break;
     }
     return fault;
 }
 
 Result<void> RegisterMap::check_reply(const Batch& batch, const BatchReply& reply) const {
     const auto operations = batch.operations();
-    const std::size_t begun =
-        reply.outcome == Outcome::done ? operations.size() : reply.failed_at;
+    const std::size_t begun = reply.outcome == Outcome::done ? operations.size() : reply.failed_at;
     for (std::size_t i = 0; i < std::min(begun, operations.size()); ++i) {
         const std::optional<std::uint32_t> result =
             i < reply.results.size() ? reply.results[i] : std::nullopt;

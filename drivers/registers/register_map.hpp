@@ -26,7 +26,7 @@ struct FieldPlace {
     std::uint32_t address = 0;  // absolute
     std::uint32_t mask = 0;     // in place
     unsigned shift = 0;
-    unsigned width_bits = 32;   // of the register
+    unsigned width_bits = 32;  // of the register
     std::uint32_t value_in(std::uint32_t whole_register) const {
         return (whole_register & mask) >> shift;
     }

@@ -5,8 +5,8 @@
 // Threads:   no shared state.
 // A bank is one element that is always connected and, for each bit of its code, one element of
 // binary weight behind a switch. A switch has an on-resistance and an off-capacitance, both scaled
-// with its weight (a wider switch for a larger element). A capacitor has a bottom-plate capacitance to
-// ground at each of its two nodes; the node between element and switch is one of them.
+// with its weight (a wider switch for a larger element). A capacitor has a bottom-plate capacitance
+// to ground at each of its two nodes; the node between element and switch is one of them.
 
 #include <complex>
 #include <cstddef>

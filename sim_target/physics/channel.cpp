@@ -30,8 +30,8 @@ PerMetre per_metre(const Line& line, double frequency_hz) {
 
     const double direct_ohm =
         1.0 / (line.conductivity_s_per_m * width_m * line.thickness_um * 1e-6);
-    const double skin_ohm = surface_resistance_ohm(frequency_hz, line.conductivity_s_per_m) /
-                            (width_m * line.faces);
+    const double skin_ohm =
+        surface_resistance_ohm(frequency_hz, line.conductivity_s_per_m) / (width_m * line.faces);
     // (skin·(1+j))² = 2j·skin²
     const Complex internal_ohm =
         std::sqrt(Complex(direct_ohm * direct_ohm, 2.0 * skin_ohm * skin_ohm));
@@ -79,8 +79,8 @@ double surface_resistance_ohm(double frequency_hz, double conductivity_s_per_m) 
 }
 
 Debye Debye::fitted(double permittivity, double loss_tangent, double at_hz) {
-    const Complex shape = std::log10(Complex(f2_hz, at_hz) / Complex(f1_hz, at_hz)) /
-                          std::log10(f2_hz / f1_hz);
+    const Complex shape =
+        std::log10(Complex(f2_hz, at_hz) / Complex(f1_hz, at_hz)) / std::log10(f2_hz / f1_hz);
     Debye debye;
     debye.fall = -permittivity * loss_tangent / shape.imag();
     debye.at_infinity = permittivity - debye.fall * shape.real();
@@ -88,8 +88,9 @@ Debye Debye::fitted(double permittivity, double loss_tangent, double at_hz) {
 }
 
 Complex Debye::at(double frequency_hz) const {
-    return at_infinity + fall / std::log10(f2_hz / f1_hz) *
-                             std::log10(Complex(f2_hz, frequency_hz) / Complex(f1_hz, frequency_hz));
+    return at_infinity +
+           fall / std::log10(f2_hz / f1_hz) *
+               std::log10(Complex(f2_hz, frequency_hz) / Complex(f1_hz, frequency_hz));
 }
 
 Complex propagation(const Line& line, double frequency_hz) {

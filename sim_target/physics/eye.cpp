@@ -107,10 +107,14 @@ void Eye::take_taps(double phase_ui) {
         }
         taps_[k] = sum;
         rise *= per_ui;
-        if (k == 0) slope_now_ = rise;
-        else if (k == 1) slope_before_ = rise;
-        else if (k + 1 == grid_.window_ui) slope_after_ = rise;
-        else slope_others_ += rise * rise;
+        if (k == 0)
+            slope_now_ = rise;
+        else if (k == 1)
+            slope_before_ = rise;
+        else if (k + 1 == grid_.window_ui)
+            slope_after_ = rise;
+        else
+            slope_others_ += rise * rise;
     }
 }
 
@@ -162,8 +166,8 @@ double Eye::error_ratio_at(double phase_ui, double offset_mv) {
     return ratio(decision_.offset_mv + offset_mv);
 }
 
-// Outwards from the decision point to the median crossing, where at least every fourth bit is wrong:
-// a bit that differs from its neighbour is there as often wrong as right.
+// Outwards from the decision point to the median crossing, where at least every fourth bit is
+// wrong: a bit that differs from its neighbour is there as often wrong as right.
 double Eye::edge_time_ui(double wanted, double at_centre, double side) {
     const double start = recovered_ui_ + decision_.phase_ui;
     const double end = recovered_ui_ + side * 0.5;
@@ -177,8 +181,8 @@ double Eye::edge_time_ui(double wanted, double at_centre, double side) {
     return std::abs(edge - start);
 }
 
-// At the level where the ones alone use up the error ratio the zeros add theirs: the edge lies at or
-// inside it.
+// At the level where the ones alone use up the error ratio the zeros add theirs: the edge lies at
+// or inside it.
 void Eye::open_heights(double error_ratio, Margins& margins) const {
     const double level = level_of_ones(2.0 * error_ratio);
     const auto distance = [&](double threshold, double direction) {
@@ -229,8 +233,10 @@ double Eye::screening_level(double phase_ui, double deviate) {
     double worst = 0, small = 0;
     for (std::size_t k = 2; k + 1 < taps_.size(); ++k) {
         const double tap = std::abs(taps_[k]);
-        if (tap > large) worst += tap;
-        else small += tap * tap;
+        if (tap > large)
+            worst += tap;
+        else
+            small += tap * tap;
     }
     double least = 1e300;
     for (std::size_t i = 0; i < around_.size(); ++i) {

@@ -5,7 +5,8 @@
 // Threads:   one thread at a time per object.
 //
 // Voltages are differential, symbols are ±1, the pulse is the response to one symbol of +1. The
-// error ratio at a threshold counts all bits: half of what the ones and half of what the zeros lose.
+// error ratio at a threshold counts all bits: half of what the ones and half of what the zeros
+// lose.
 
 #include <array>
 #include <span>
@@ -18,8 +19,8 @@ namespace lanewright::sim {
 
 // Distances from the decision point; all above zero where the eye is open at the error ratio.
 // Where it is closed they continue below zero: up and down to the level that the ones and the
-// zeros reach with the error ratio; left and right as half a unit interval times the missing share of
-// the normal deviate (0 where the centre just reaches the ratio, -1/2 at half errors).
+// zeros reach with the error ratio; left and right as half a unit interval times the missing share
+// of the normal deviate (0 where the centre just reaches the ratio, -1/2 at half errors).
 struct Margins {
     bool locked = false;  // the waveform has a median crossing and a positive cursor
     bool closed = true;
@@ -59,10 +60,10 @@ class Eye {
     void fill(std::span<const double> pulse_mv, const Disturbance& disturbance,
               const Decision& decision);
 
-    // The recovered sampling phase without the decision's own offset: half a unit interval after the
-    // median crossing. The symbols around a transition are symmetric about zero, so the median of
-    // the waveform there is p(t − T) − p(t) and the crossing is where these two are equal.
-    // In unit intervals from the start of the window; of several the one with the largest cursor.
+    // The recovered sampling phase without the decision's own offset: half a unit interval after
+    // the median crossing. The symbols around a transition are symmetric about zero, so the median
+    // of the waveform there is p(t − T) − p(t) and the crossing is where these two are equal. In
+    // unit intervals from the start of the window; of several the one with the largest cursor.
     double recovered_phase_ui() const { return recovered_ui_; }
     double cursor_mv(double phase_ui) const { return pulse_at(phase_ui); }
 

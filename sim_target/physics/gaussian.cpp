@@ -21,8 +21,7 @@ std::array<TablePoint, table_size> make_table() {
     std::array<TablePoint, table_size> table{};
     for (std::size_t i = 0; i < table_size; ++i) {
         const double x = static_cast<double>(i) / table_steps - table_reach;
-        table[i] = {gaussian_tail(x),
-                    std::exp(-0.5 * x * x) / std::sqrt(2.0 * std::numbers::pi)};
+        table[i] = {gaussian_tail(x), std::exp(-0.5 * x * x) / std::sqrt(2.0 * std::numbers::pi)};
     }
     return table;
 }
@@ -41,9 +40,8 @@ double quick_gaussian_tail(double x) {
     const double a2 = a * a;
     const double series =
         d * (1.0 -
-             d * (a / 2.0 -
-                  d * ((a2 - 1.0) / 6.0 -
-                       d * (a * (a2 - 3.0) / 24.0 - d * (a2 * a2 - 6.0 * a2 + 3.0) / 120.0))));
+             d * (a / 2.0 - d * ((a2 - 1.0) / 6.0 - d * (a * (a2 - 3.0) / 24.0 -
+                                                         d * (a2 * a2 - 6.0 * a2 + 3.0) / 120.0))));
     return point.tail - point.density * series;
 }
 

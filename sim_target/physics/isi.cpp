@@ -10,8 +10,8 @@ namespace lanewright::sim {
 
 namespace {
 
-constexpr double small_tap_share = 0.1;     // of sigma
-constexpr double grid_share = 0.25;         // of sigma
+constexpr double small_tap_share = 0.1;        // of sigma
+constexpr double grid_share = 0.25;            // of sigma
 constexpr std::size_t most_half_steps = 6000;  // of the grid; a coarser one is taken beyond
 
 }  // namespace

@@ -33,7 +33,7 @@ class NoisyIsi {
     double level_at(double probability) const;
     double lowest() const { return value_.front(); }  // of the support, without noise
 
-    double sigma() const { return sigma_; }                    // of the Gaussian part
+    double sigma() const { return sigma_; }  // of the Gaussian part
     std::size_t support_size() const { return value_.size(); }
 
     static constexpr std::size_t exact_taps = 8;

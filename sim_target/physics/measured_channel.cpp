@@ -127,13 +127,13 @@ Scattering MeasuredChannel::at(double frequency_hz) const {
         s = beyond_last(frequency_hz);
     } else if (frequency_hz < frequency_hz_.front()) {
         const double f0 = frequency_hz_[0], f1 = frequency_hz_[1];
-        const Scattering zero{at_zero(s_[0].s11, s_[1].s11, f0, f1),
-                              at_zero(s_[0].s12, s_[1].s12, f0, f1),
-                              at_zero(s_[0].s21, s_[1].s21, f0, f1),
-                              at_zero(s_[0].s22, s_[1].s22, f0, f1)};
+        const Scattering zero{
+            at_zero(s_[0].s11, s_[1].s11, f0, f1), at_zero(s_[0].s12, s_[1].s12, f0, f1),
+            at_zero(s_[0].s21, s_[1].s21, f0, f1), at_zero(s_[0].s22, s_[1].s22, f0, f1)};
         s = mixed(zero, s_[0], frequency_hz / f0);
     } else {
-        const auto above = std::upper_bound(frequency_hz_.begin(), frequency_hz_.end(), frequency_hz);
+        const auto above =
+            std::upper_bound(frequency_hz_.begin(), frequency_hz_.end(), frequency_hz);
         const auto i = static_cast<std::size_t>(above - frequency_hz_.begin());
         const double f0 = frequency_hz_[i - 1], f1 = frequency_hz_[i];
         s = mixed(s_[i - 1], s_[i], (frequency_hz - f0) / (f1 - f0));
@@ -173,7 +173,8 @@ MeasuredChannel MeasuredChannel::from_two_ports(const Touchstone& data, bool dif
     std::vector<Scattering> s(data.frequency_hz.size());
     for (std::size_t i = 0; i < s.size(); ++i)
         s[i] = {data.at(i, 1, 1), data.at(i, 1, 2), data.at(i, 2, 1), data.at(i, 2, 2)};
-    return {data.frequency_hz, std::move(s), differential ? data.reference_ohm / 2 : data.reference_ohm};
+    return {data.frequency_hz, std::move(s),
+            differential ? data.reference_ohm / 2 : data.reference_ohm};
 }
 
 }  // namespace lanewright::sim

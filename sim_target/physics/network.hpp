@@ -25,9 +25,9 @@ enum BankIndex : std::size_t { bank_r1 = 0, bank_c1 = 1, bank_r2 = 2, bank_c2 = 
 
 struct Receiver {
     double termination_ohm = 50;
-    double pad_f = 0;                   // at node a
-    double load_f = 0;                  // at node out: the sampler's input
-    double load_ohm = 0;                // 0: none
+    double pad_f = 0;     // at node a
+    double load_f = 0;    // at node out: the sampler's input
+    double load_ohm = 0;  // 0: none
     std::array<BankSpec, bank_count> banks;
 };
 
@@ -38,8 +38,8 @@ struct Noise {
 
 // What is solved for one set of codes.
 struct Solution {
-    std::vector<Cx> transfer;   // out over the transmitter's open-circuit voltage, each frequency
-    double noise_v2 = 0;        // input and resistor noise at out, differential, mean square
+    std::vector<Cx> transfer;  // out over the transmitter's open-circuit voltage, each frequency
+    double noise_v2 = 0;       // input and resistor noise at out, differential, mean square
     double resistor_noise_v2 = 0;  // the resistors' part of it
 };
 
@@ -61,10 +61,10 @@ class Network {
     };
     Grid grid_;
     Noise noise_;
-    double ideal_input_s_;                    // admittance of an ideally terminated input
+    double ideal_input_s_;  // admittance of an ideally terminated input
     std::array<int, bank_count> code_count_;
-    std::vector<Cx> drive_;                   // Norton current per volt of the source
-    std::vector<Cx> input_, output_;          // code-independent admittance at a and at out
+    std::vector<Cx> drive_;                     // Norton current per volt of the source
+    std::vector<Cx> input_, output_;            // code-independent admittance at a and at out
     std::vector<std::vector<Series>> r1_, c1_;  // by code, then frequency
     std::vector<std::vector<Cx>> r2_, c2_;
 };

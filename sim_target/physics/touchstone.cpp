@@ -63,13 +63,20 @@ Options options_of(std::string_view line, const std::string& file, std::size_t l
     const std::vector<std::string_view> words = words_of(line.substr(1));
     for (std::size_t i = 0; i < words.size(); ++i) {
         const std::string word = lower_case(words[i]);
-        if (word == "hz") options.hertz = 1;
-        else if (word == "khz") options.hertz = 1e3;
-        else if (word == "mhz") options.hertz = 1e6;
-        else if (word == "ghz") options.hertz = 1e9;
-        else if (word == "ma") options.pair = Pair::magnitude_angle;
-        else if (word == "db") options.pair = Pair::decibel_angle;
-        else if (word == "ri") options.pair = Pair::real_imaginary;
+        if (word == "hz")
+            options.hertz = 1;
+        else if (word == "khz")
+            options.hertz = 1e3;
+        else if (word == "mhz")
+            options.hertz = 1e6;
+        else if (word == "ghz")
+            options.hertz = 1e9;
+        else if (word == "ma")
+            options.pair = Pair::magnitude_angle;
+        else if (word == "db")
+            options.pair = Pair::decibel_angle;
+        else if (word == "ri")
+            options.pair = Pair::real_imaginary;
         else if (word == "y" || word == "z" || word == "g" || word == "h")
             bad(file, line_number,
                 "parameters of kind " + word + "; only scattering parameters (S) are read");
@@ -80,7 +87,8 @@ Options options_of(std::string_view line, const std::string& file, std::size_t l
             options.reference_ohm = *ohm;
             ++i;
         } else if (word != "s")
-            bad(file, line_number, "unknown word '" + std::string(words[i]) + "' in the option line");
+            bad(file, line_number,
+                "unknown word '" + std::string(words[i]) + "' in the option line");
     }
     return options;
 }
@@ -104,8 +112,9 @@ Contents contents_of(std::string_view text, const std::string& file) {
         const std::vector<std::string_view> words = words_of(line);
         if (words.empty()) continue;
         if (words.front().starts_with('[')) {
-            bad(file, number, "keyword " + std::string(words.front()) +
-                                  ": version 2 files are not read, save as version 1");
+            bad(file, number,
+                "keyword " + std::string(words.front()) +
+                    ": version 2 files are not read, save as version 1");
         }
         if (words.front().starts_with('#')) {
             const auto hash = line.substr(line.find('#'));

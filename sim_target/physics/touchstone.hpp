@@ -23,8 +23,8 @@ class BadData : public std::runtime_error {
 struct Touchstone {
     std::size_t ports = 0;
     double reference_ohm = 50;
-    std::vector<double> frequency_hz;          // strictly ascending
-    std::vector<std::vector<Complex>> s;       // for each frequency row-major: S11 S12 ... S21 ...
+    std::vector<double> frequency_hz;     // strictly ascending
+    std::vector<std::vector<Complex>> s;  // for each frequency row-major: S11 S12 ... S21 ...
 
     // Port numbers from 1, as in the trade's notation.
     Complex at(std::size_t point, std::size_t to, std::size_t from) const {
@@ -46,8 +46,8 @@ struct PortPair {
 class MeasuredChannel {
   public:
     // Four ports: differential scattering of the stated pairs, SDD21 = (S31 − S32 − S41 + S42)/2
-    // for near 1, 2 and far 3, 4; the reference of the half circuit is the file's. Throws BadData if
-    // a pair names a port that is not there or names one twice.
+    // for near 1, 2 and far 3, 4; the reference of the half circuit is the file's. Throws BadData
+    // if a pair names a port that is not there or names one twice.
     static MeasuredChannel from_four_ports(const Touchstone& data, PortPair near, PortPair far,
                                            const std::string& file_name);
     // Two ports: the half circuit itself, or with `differential` a pair whose reference is that of
@@ -57,8 +57,8 @@ class MeasuredChannel {
 
     // Between the points: straight lines in the complex plane, with the bulk delay taken out of the
     // transfer meanwhile. Down to direct current: the first two points' line, made real. Beyond the
-    // last point: the transfer keeps its delay and loses a1·sqrt(f) + a2·f dB as fitted to the upper
-    // half of the points; reflections fall with 1/f.
+    // last point: the transfer keeps its delay and loses a1·sqrt(f) + a2·f dB as fitted to the
+    // upper half of the points; reflections fall with 1/f.
     Scattering at(double frequency_hz) const;
 
     double reference_ohm() const { return reference_ohm_; }

@@ -1,5 +1,6 @@
 #pragma once
-// Purpose:   the oracle: the noise-free margin of any codes of a lane, and the best codes. For tests
+// Purpose:   the oracle: the noise-free margin of any codes of a lane, and the best codes. For
+// tests
 //            and benchmarks, and for what the simulated board's monitor latches. No strategy can
 //            reach it: it is not on any wire.
 // Ownership: an Oracle owns the lane's tables (some 2 MB) and keeps nothing of the target file.
@@ -25,8 +26,8 @@ class Oracle {
     Oracle(Oracle&&) noexcept;
     Oracle& operator=(Oracle&&) noexcept;
 
-    // Codes in the order r1, c1, r2, c2, each inside its bank, else std::out_of_range; error_ratio in
-    // (0, 0.1], else std::invalid_argument.
+    // Codes in the order r1, c1, r2, c2, each inside its bank, else std::out_of_range; error_ratio
+    // in (0, 0.1], else std::invalid_argument.
     Margins margins(const std::vector<int>& codes, double error_ratio) const;
     double error_ratio_at(const std::vector<int>& codes, double phase_ui, double offset_mv) const;
     double screening_score(const std::vector<int>& codes, const Required& required) const;

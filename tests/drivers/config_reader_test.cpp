@@ -1,5 +1,6 @@
+#include <unistd.h>
+
 #include <catch2/catch.hpp>
-#include <cstdio>
 #include <filesystem>
 #include <fstream>
 #include <string>
@@ -99,7 +100,7 @@ TEST_CASE("files that are missing, folders, devices or too large are refused wit
           "/dev/zero: found a pipe or device, expected a regular file\n");
 
     const auto path = std::filesystem::temp_directory_path() /
-                      ("lanewright_config_" + std::to_string(std::rand()) + ".json");
+                      ("lanewright_config_" + std::to_string(getpid()) + ".json");
     std::ofstream(path) << "{}";
     std::filesystem::resize_file(path, (std::uintmax_t{16} << 20) + 1);
     CHECK(complaints_of_file(path.string()) ==

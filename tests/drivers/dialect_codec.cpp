@@ -1,5 +1,5 @@
-#include <catch2/catch.hpp>
 #include <algorithm>
+#include <catch2/catch.hpp>
 #include <random>
 
 #include "drivers/dialects/bytes.hpp"
@@ -115,7 +115,8 @@ TEST_CASE("20,000 random payloads survive framing, also by another hand's codec"
         const ByteList payload = random_bytes(random, i % 16 == 0 ? 700 : 60);
         const ByteList encoded = cobs_encode(payload);
         REQUIRE(std::find(encoded.begin(), encoded.end(), std::byte{0}) == encoded.end());
-        REQUIRE(encoded.size() <= payload.size() + std::max<std::size_t>(1, (payload.size() + 253) / 254));
+        REQUIRE(encoded.size() <=
+                payload.size() + std::max<std::size_t>(1, (payload.size() + 253) / 254));
         REQUIRE(*cobs_decode(encoded) == payload);
         if (payload.empty()) continue;
         Octets octets;

@@ -40,8 +40,8 @@ Octets hello_answer(std::uint8_t try_number, std::uint32_t session, std::uint32_
     for (unsigned i = 0; i < 4; ++i) out.push_back(static_cast<std::uint8_t>(session >> (8 * i)));
     out.push_back(static_cast<std::uint8_t>(boot));  // below 128
     out.push_back(resumed ? 1 : 0);
-    out.insert(out.end(), {0x80, 0x08});              // 1024 bytes
-    out.push_back(static_cast<std::uint8_t>(slots));  // below 128
+    out.insert(out.end(), {0x80, 0x08});                                // 1024 bytes
+    out.push_back(static_cast<std::uint8_t>(slots));                    // below 128
     out.insert(out.end(), {0x80, 0x02, 0x80, 0x8E, 0xCE, 0x1C, 4, 0});  // 256, 60 s, 4, 0
     return out;
 }
@@ -95,7 +95,9 @@ void Desk::greet() {
     hear({hello_answer(last_try, desk_session, 7, false)});
 }
 
-void Desk::admit() { dialect.admit(now); }
+void Desk::admit() {
+    dialect.admit(now);
+}
 
 DialectStep Desk::submit(std::uint64_t ticket, const Batch& batch, Urgency urgency) {
     dialect.submit(static_cast<Ticket>(ticket), batch, urgency);

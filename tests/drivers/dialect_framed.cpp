@@ -9,7 +9,9 @@ using std::chrono::milliseconds;
 
 namespace {
 
-Ticket ticket(std::uint64_t number) { return static_cast<Ticket>(number); }
+Ticket ticket(std::uint64_t number) {
+    return static_cast<Ticket>(number);
+}
 
 std::uint32_t session_in(const Octets& hello) {
     return hello.at(3) + 256u * hello.at(4) + 65536u * hello.at(5) + 16777216u * hello.at(6);
@@ -91,8 +93,7 @@ TEST_CASE("replies may come in any order and go to the batch they belong to") {
     const auto first = payloads_in(desk.submit(1, desk.read_batch()).send).at(0);
     const auto second = payloads_in(desk.submit(2, desk.read_batch()).send).at(0);
     CHECK(first[1] != second[1]);  // slots of their own
-    const DialectStep step =
-        desk.hear({reply_to(second, {0, 0x22}), reply_to(first, {0, 0x11})});
+    const DialectStep step = desk.hear({reply_to(second, {0, 0x22}), reply_to(first, {0, 0x11})});
     REQUIRE(step.finished.size() == 2);
     CHECK(step.finished[0].ticket == ticket(2));
     CHECK(step.finished[0].result.value().results.at(0) == 0x22u);
@@ -304,13 +305,13 @@ TEST_CASE("a board that knows no session is greeted anew and asked again") {
 
 TEST_CASE("a reply that does not fit its batch is refused, not taken for a value") {
     const std::vector<Octets> bad{
-        {0},                 // the result is missing
-        {0, 1, 2},           // one too many
-        {7},                 // no such outcome
-        {4, 0, 1},           // a read cannot expire
-        {1, 5},              // no such operation
-        {0, 0x80},           // a varint cut off
-        {5, 0, 1},           // a read is not written
+        {0},        // the result is missing
+        {0, 1, 2},  // one too many
+        {7},        // no such outcome
+        {4, 0, 1},  // a read cannot expire
+        {1, 5},     // no such operation
+        {0, 0x80},  // a varint cut off
+        {5, 0, 1},  // a read is not written
     };
     for (const Octets& content : bad) {
         Desk desk;
@@ -343,8 +344,8 @@ TEST_CASE("a failed operation comes with what was done before it and what was se
     Batch batch;
     REQUIRE(good(desk.map.read(batch, Lane{0}, {"ID", "value"})));
     REQUIRE(good(desk.map.write_declared(batch, Lane{0}, {"LOAD", "strobe"}, 1)));
-    REQUIRE(good(desk.map.wait_until(batch, Lane{0}, {"STATUS", "lock"}, 1,
-                                     std::chrono::microseconds(50))));
+    REQUIRE(good(
+        desk.map.wait_until(batch, Lane{0}, {"STATUS", "lock"}, 1, std::chrono::microseconds(50))));
     REQUIRE(good(desk.map.read(batch, Lane{0}, {"NOTE", "value"})));
     const auto sent = payloads_in(desk.submit(1, batch).send).at(0);
     const BatchReply reply =

@@ -29,7 +29,8 @@ Octets read_hex(const std::filesystem::path& path) {
 
 std::vector<Octets> corpus() {
     std::vector<Octets> out;
-    const std::filesystem::path folder = std::string(LANEWRIGHT_SOURCE_DIR) + "/tests/corpus/framed";
+    const std::filesystem::path folder =
+        std::string(LANEWRIGHT_SOURCE_DIR) + "/tests/corpus/framed";
     for (const auto& entry : std::filesystem::directory_iterator(folder)) {
         if (entry.path().extension() == ".hex") out.push_back(read_hex(entry.path()));
     }

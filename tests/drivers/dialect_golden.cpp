@@ -29,8 +29,8 @@ std::string file_text(const std::string& path) {
 // Compares with the golden file, or writes it when asked to.
 void check_golden(const std::string& name, const Octets& payload) {
     const std::vector<std::byte> bytes = bytes_of(payload);
-    const std::string text = "payload " + hex_of(bytes, 4096) + "\non line " +
-                             hex_of(frame_of(bytes), 4096) + "\n";
+    const std::string text =
+        "payload " + hex_of(bytes, 4096) + "\non line " + hex_of(frame_of(bytes), 4096) + "\n";
     const std::string path = source_dir + "/tests/golden/framed/" + name + ".hex";
     const char* wish = std::getenv("LANEWRIGHT_GOLDEN");
     if (wish != nullptr && std::string(wish) == "rewrite") {
@@ -123,8 +123,8 @@ TEST_CASE("the host's golden frames are what the host sends") {
 
 TEST_CASE("the board's golden frames are read as the page says") {
     const RegisterMap map(page_board());
-    const Octets answer{0x81, 1, 1, 0x4A, 0x3B, 0x2C, 0x1D, 7, 0, 0x80, 8, 0x10, 0x80, 2, 0x80,
-                        0x8E, 0xCE, 0x1C, 4, 0};
+    const Octets answer{0x81, 1,    1,    0x4A, 0x3B, 0x2C, 0x1D, 7,    0, 0x80,
+                        8,    0x10, 0x80, 2,    0x80, 0x8E, 0xCE, 0x1C, 4, 0};
     const Octets values{0x82, 0, 1, 0, 0x4A, 0x3B, 7, 0, 0xB8, 0xA4, 0xE9, 0xFA, 4, 0};
     const Octets applied{0x82, 3, 2, 1, 0x4A, 0x3B, 0xAC, 2, 0, 1, 9, 1};
     const Octets expired{0x82, 3, 2, 1, 0x4A, 0x3B, 0xAC, 2, 4, 4, 1, 9, 0};
@@ -181,8 +181,8 @@ TEST_CASE("a counted look costs at most 50 bytes of line, request and reply toge
         REQUIRE(good(map.write_declared(batch, Lane{0}, {"PHASE", "f"}, 0x7F)));
         REQUIRE(good(map.write_declared(batch, Lane{0}, {"OFFSET", "f"}, 0x1FF)));
         REQUIRE(good(map.write_declared(batch, Lane{0}, {"START", "f"}, 1)));
-        REQUIRE(good(map.wait_until(batch, Lane{0}, {"BUSY", "f"}, 0,
-                                    std::chrono::microseconds(1000000))));
+        REQUIRE(good(
+            map.wait_until(batch, Lane{0}, {"BUSY", "f"}, 0, std::chrono::microseconds(1000000))));
         REQUIRE(good(map.read(batch, Lane{0}, {"BITS", "f"})));
         REQUIRE(good(map.read(batch, Lane{0}, {"ERRORS", "f"})));
         // The longest values there are: read-backs, the wait's, and two full counters.

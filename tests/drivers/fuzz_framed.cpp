@@ -16,15 +16,33 @@ class Player {
   public:
     void step(unsigned operation, const Octets& content) {
         switch (operation % 9) {
-            case 0: look(desk_.dialect.step(bytes_of(content), desk_.now)); break;
-            case 1: hear(content); break;
-            case 2: answer(content); break;
-            case 3: submit(content); break;
-            case 4: look(desk_.tick(std::chrono::milliseconds(content.empty() ? 1 : content[0]))); break;
-            case 5: relink(); break;
-            case 6: look(desk_.dialect.admit(desk_.now)); break;
-            case 7: look(desk_.dialect.again(pick(content), desk_.now)); break;
-            default: give_up(pick(content)); break;
+            case 0:
+                look(desk_.dialect.step(bytes_of(content), desk_.now));
+                break;
+            case 1:
+                hear(content);
+                break;
+            case 2:
+                answer(content);
+                break;
+            case 3:
+                submit(content);
+                break;
+            case 4:
+                look(desk_.tick(std::chrono::milliseconds(content.empty() ? 1 : content[0])));
+                break;
+            case 5:
+                relink();
+                break;
+            case 6:
+                look(desk_.dialect.admit(desk_.now));
+                break;
+            case 7:
+                look(desk_.dialect.again(pick(content), desk_.now));
+                break;
+            default:
+                give_up(pick(content));
+                break;
         }
     }
 
@@ -102,8 +120,7 @@ void fuzz_framed(std::span<const std::uint8_t> script) {
     Player player;
     for (std::size_t at = 0; at + 1 < script.size();) {
         const unsigned operation = script[at];
-        const std::size_t length =
-            std::min<std::size_t>(script[at + 1], script.size() - at - 2);
+        const std::size_t length = std::min<std::size_t>(script[at + 1], script.size() - at - 2);
         const auto content = script.subspan(at + 2, length);
         player.step(operation, Octets(content.begin(), content.end()));
         at += 2 + length;

@@ -9,7 +9,9 @@ using namespace lanewright::test;
 
 namespace {
 
-Codes codes(std::int32_t a, std::int32_t b) { return {{a, b}}; }
+Codes codes(std::int32_t a, std::int32_t b) {
+    return {{a, b}};
+}
 
 const Write& write_at(const Batch& batch, std::size_t at) {
     return std::get<Write>(batch.operations()[at]);
@@ -179,7 +181,8 @@ TEST_CASE("a batch that the board ended is a fault that names the operation's re
     const RegisterMap map(small_board());
     Batch batch;
     REQUIRE(good(map.read(batch, Lane{0}, {"EQ", "a"})));
-    REQUIRE(good(map.wait_until(batch, Lane{0}, {"STATUS", "lock"}, 1, std::chrono::microseconds(9))));
+    REQUIRE(
+        good(map.wait_until(batch, Lane{0}, {"STATUS", "lock"}, 1, std::chrono::microseconds(9))));
     BatchReply reply;
     reply.outcome = Outcome::wait_expired;
     reply.failed_at = 1;

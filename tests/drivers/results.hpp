@@ -11,8 +11,8 @@ namespace lanewright::test {
 
 template <class T>
 bool good(const Result<T>& result) {
-    if (!result) UNSCOPED_INFO("fault: " << name_of(result.error().cause) << ": "
-                                         << result.error().text());
+    if (!result)
+        UNSCOPED_INFO("fault: " << name_of(result.error().cause) << ": " << result.error().text());
     return result.has_value();
 }
 

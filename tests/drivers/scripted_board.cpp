@@ -10,7 +10,8 @@ std::uint32_t crc_bit_by_bit(const Octets& data) {
     std::uint32_t crc = 0xFFFFFFFFu;
     for (const std::uint8_t each : data) {
         crc ^= each;
-        for (int bit = 0; bit < 8; ++bit) crc = (crc & 1) != 0 ? (crc >> 1) ^ 0x82F63B78u : crc >> 1;
+        for (int bit = 0; bit < 8; ++bit)
+            crc = (crc & 1) != 0 ? (crc >> 1) ^ 0x82F63B78u : crc >> 1;
     }
     return ~crc;
 }
@@ -46,7 +47,9 @@ struct Cursor {
     }
 };
 
-bool has_own_result(unsigned code) { return code == 0 || code == 2 || code == 3; }
+bool has_own_result(unsigned code) {
+    return code == 0 || code == 2 || code == 3;
+}
 
 }  // namespace
 
@@ -94,7 +97,9 @@ std::optional<Octets> unframed_by_hand(const Octets& encoded) {
 ScriptedBoard::ScriptedBoard(TimeSource& time, Link& link)
     : time_(time), link_(link), tasks_(time.io()) {}
 
-void ScriptedBoard::start() { tasks_.spawn("scripted board", serve()); }
+void ScriptedBoard::start() {
+    tasks_.spawn("scripted board", serve());
+}
 
 Task<void> ScriptedBoard::close() {
     tasks_.stop();
@@ -187,7 +192,8 @@ void ScriptedBoard::take_hello(const Octets& payload) {
     if (known.slots.empty()) known.slots.resize(slots);
     session_ = session;
     Octets answer{0x81, static_cast<std::uint8_t>(try_number), 1};
-    for (unsigned i = 0; i < 4; ++i) answer.push_back(static_cast<std::uint8_t>(session >> (8 * i)));
+    for (unsigned i = 0; i < 4; ++i)
+        answer.push_back(static_cast<std::uint8_t>(session >> (8 * i)));
     append_varint(answer, boot);
     answer.push_back(known.used ? 1 : 0);
     for (const std::uint32_t limit : {largest_payload, slots, most_operations, 60000000u, 4u}) {
@@ -293,8 +299,7 @@ Task<void> ScriptedBoard::carry_out(std::uint32_t session, Head head,
             write(each);
         }
         if (epoch != epoch_) co_return Result<void>{};  // reset in mid-batch: no reply
-        if (outcome == 0 && each.code == 2 &&
-            (registers[each.address] & each.mask) != each.value) {
+        if (outcome == 0 && each.code == 2 && (registers[each.address] & each.mask) != each.value) {
             outcome = 5;
         }
         if (outcome != 0) failed_at = static_cast<std::uint32_t>(i);

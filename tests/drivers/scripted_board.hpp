@@ -21,8 +21,8 @@ namespace lanewright::test {
 
 using Octets = std::vector<std::uint8_t>;
 
-Octets framed_by_hand(const Octets& payload);                       // with the closing zero
-std::optional<Octets> unframed_by_hand(const Octets& encoded);      // without it
+Octets framed_by_hand(const Octets& payload);                   // with the closing zero
+std::optional<Octets> unframed_by_hand(const Octets& encoded);  // without it
 
 // One write as it was carried out.
 struct DoneWrite {
@@ -39,17 +39,17 @@ class ScriptedBoard {
 
     std::map<std::uint32_t, std::uint32_t> registers;  // those that exist
     std::set<std::uint32_t> self_clearing;
-    std::function<void(const DoneWrite&)> on_write;    // after a write was carried out
-    std::function<void(Octets&)> on_reply;             // may alter a reply's payload
-    std::vector<DoneWrite> writes;                     // in order of being carried out
+    std::function<void(const DoneWrite&)> on_write;  // after a write was carried out
+    std::function<void(Octets&)> on_reply;           // may alter a reply's payload
+    std::vector<DoneWrite> writes;                   // in order of being carried out
     std::uint32_t boot = 7;
-    bool silent = false;      // takes everything, answers nothing
-    bool forgets = false;     // knows no session at each new hello
+    bool silent = false;   // takes everything, answers nothing
+    bool forgets = false;  // knows no session at each new hello
     std::uint32_t largest_payload = 1024, slots = 16, most_operations = 256;
     std::uint64_t batches_begun = 0, repeats = 0, hellos = 0, bad_frames = 0;
     std::uint64_t bytes_in = 0, bytes_out = 0;
 
-    void reset();             // another boot number, everything forgotten
+    void reset();                       // another boot number, everything forgotten
     void say(const std::string& text);  // console text on the line
 
   private:

@@ -25,11 +25,12 @@ SessionBench::SessionBench(MemoryOptions options)
 
 Task<void> SessionBench::whole(TestTask task) {
     scripted.start();
-    Result<std::unique_ptr<Board>> opened = co_await open_board(file, std::move(pair.host), time, 1);
+    Result<std::unique_ptr<Board>> opened =
+        co_await open_board(file, std::move(pair.host), time, 1);
     Result<void> outcome;
     if (opened) {
         board = std::move(*opened);
-        outcome = co_await task(*this);
+        outcome = co_await task(this);
         last_statistics = board->statistics();
         const Result<void> closed = co_await board->close();
         if (outcome && !closed) outcome = closed.error();
@@ -41,7 +42,9 @@ Task<void> SessionBench::whole(TestTask task) {
     co_return outcome;
 }
 
-Result<void> SessionBench::run(TestTask task) { return run_until_done(time, whole(task)); }
+Result<void> SessionBench::run(TestTask task) {
+    return run_until_done(time, whole(task));
+}
 
 Batch SessionBench::reads(const FieldName& name, Lane lane) const {
     Batch batch;

@@ -21,7 +21,7 @@ class SessionBench {
 
     // Opens the board, runs the test's task, closes everything. Gives the task's result, or the
     // fault of opening.
-    using TestTask = Task<void> (*)(SessionBench& bench);
+    using TestTask = Task<void> (*)(SessionBench* bench);
     Result<void> run(TestTask task);
 
     static MemoryOptions slow_memory();  // 1 ms each way, so that answers can be overtaken

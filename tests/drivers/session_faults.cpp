@@ -27,41 +27,67 @@ MemoryHook lose_first(int& count) {
     };
 }
 
-Task<void> one_strobe(SessionBench& bench) {
-    Result<BatchReply> reply = co_await bench.registers().run(Lane{0}, bench.strobes(), bench.soon());
+Task<void> one_strobe(SessionBench* bench) {
+    Result<BatchReply> reply =
+        co_await bench->registers().run(Lane{0}, bench->strobes(), bench->soon());
     if (!reply) co_return reply.error();
     co_return Result<void>{};
 }
 
-Task<void> one_read(SessionBench& bench) {
+// Not inside the coroutines: this compiler destroys aggregates made there within a co_await twice.
+Batch reads_scratch(const SessionBench& bench) {
+    return bench.reads({"SCRATCH", "value"});
+}
+Batch reads_note_of_lane_1(const SessionBench& bench) {
+    return bench.reads({"NOTE", "value"}, Lane{1});
+}
+
+// The transaction's number is written and read back, with a strobe in every third.
+Batch transaction(const SessionBench& bench, std::uint32_t i) {
+    Batch batch = bench.writes_note(i);
+    if (i % 3 == 0) {
+        REQUIRE(good(bench.map.write_declared(batch, Lane{0}, {"LOAD", "strobe"}, 1)));
+    }
+    REQUIRE(good(bench.map.read(batch, Lane{0}, {"NOTE", "value"})));
+    return batch;
+}
+
+Batch waits_half_a_second(const SessionBench& bench) {
+    Batch batch;
+    REQUIRE(good(bench.map.wait_until(batch, Lane{1}, {"MONITOR", "busy"}, 1,
+                                      std::chrono::microseconds(500000))));
+    return batch;
+}
+
+Task<void> one_read(SessionBench* bench) {
     Result<BatchReply> reply =
-        co_await bench.registers().run(Lane{0}, bench.reads({"SCRATCH", "value"}), bench.soon());
+        co_await bench->registers().run(Lane{0}, reads_scratch(*bench), bench->soon());
     if (!reply) co_return reply.error();
-    CHECK(reply->results.at(0) == bench.scripted.registers[at_scratch]);
+    CHECK(reply->results.at(0) == bench->scripted.registers[at_scratch]);
     co_return Result<void>{};
 }
 
 int to_lose = 0;
 
-Task<void> strobe_with_lost_request(SessionBench& bench) {
+Task<void> strobe_with_lost_request(SessionBench* bench) {
     to_lose = 2;
-    bench.pair.cable->on_host_writes(lose_first(to_lose));
+    bench->pair.cable->on_host_writes(lose_first(to_lose));
     co_return co_await one_strobe(bench);
 }
 
-Task<void> strobe_with_lost_replies(SessionBench& bench) {
+Task<void> strobe_with_lost_replies(SessionBench* bench) {
     to_lose = 3;
-    bench.pair.cable->on_board_writes(lose_first(to_lose));
+    bench->pair.cable->on_board_writes(lose_first(to_lose));
     co_return co_await one_strobe(bench);
 }
 
-Task<void> strobe_on_silent_board(SessionBench& bench) {
-    bench.scripted.silent = true;
+Task<void> strobe_on_silent_board(SessionBench* bench) {
+    bench->scripted.silent = true;
     co_return co_await one_strobe(bench);
 }
 
-Task<void> read_on_silent_board(SessionBench& bench) {
-    bench.scripted.silent = true;
+Task<void> read_on_silent_board(SessionBench* bench) {
+    bench->scripted.silent = true;
     co_return co_await one_read(bench);
 }
 
@@ -122,7 +148,8 @@ TEST_CASE("lost replies are asked for again and the batch is carried out once") 
     CHECK(bench.last_statistics.retries == 3);
 }
 
-TEST_CASE("on a silent board a read times out, a strobe's outcome is unknown, and it is sent no more") {
+TEST_CASE(
+    "on a silent board a read times out, a strobe's outcome is unknown, and it is sent no more") {
     SessionBench read_bench;
     const Result<void> read = read_bench.run(read_on_silent_board);
     REQUIRE(!read);
@@ -143,35 +170,39 @@ TEST_CASE("on a silent board a read times out, a strobe's outcome is unknown, an
 
 namespace {
 
-Task<void> cut_in_mid_strobe(SessionBench& bench) {
-    // The board gets it, then the link goes before the answer can leave.
-    bench.scripted.on_write = [&bench](const DoneWrite&) {
-        bench.scripted.on_write = nullptr;
-        bench.pair.cable->cut();
-    };
-    co_return co_await one_strobe(bench);
-}
-
-Task<void> cut_and_forgotten(SessionBench& bench) {
-    bench.scripted.forgets = true;
-    co_return co_await cut_in_mid_strobe(bench);
-}
-
-Task<void> unplugged_for_good(SessionBench& bench) {
-    bench.pair.cable->unplug();
-    co_return co_await one_read(bench);
-}
-
 Task<void> plug_in_later(SessionBench* bench) {
     co_await bench->time.sleep_until(bench->time.now() + milliseconds(1500));
     bench->pair.cable->plug_in();
     co_return Result<void>{};
 }
 
-Task<void> unplugged_for_a_while(SessionBench& bench) {
-    TaskGroup helper(bench.io);
-    bench.pair.cable->unplug();
-    helper.spawn("plug in", plug_in_later(&bench));
+Task<void> cut_in_mid_strobe(SessionBench* bench) {
+    // The board gets it, then the link goes before the answer can arrive.
+    bench->scripted.on_write = [bench](const DoneWrite&) {
+        bench->scripted.on_write = nullptr;
+        bench->pair.cable->unplug();
+    };
+    TaskGroup helper(bench->io);
+    helper.spawn("plug in", plug_in_later(bench));
+    Result<void> outcome = co_await one_strobe(bench);
+    const Result<void> joined = co_await helper.join();
+    co_return outcome;
+}
+
+Task<void> cut_and_forgotten(SessionBench* bench) {
+    bench->scripted.forgets = true;
+    co_return co_await cut_in_mid_strobe(bench);
+}
+
+Task<void> unplugged_for_good(SessionBench* bench) {
+    bench->pair.cable->unplug();
+    co_return co_await one_read(bench);
+}
+
+Task<void> unplugged_for_a_while(SessionBench* bench) {
+    TaskGroup helper(bench->io);
+    bench->pair.cable->unplug();
+    helper.spawn("plug in", plug_in_later(bench));
     Result<void> outcome = co_await one_read(bench);
     const Result<void> joined = co_await helper.join();
     co_return outcome;
@@ -184,7 +215,7 @@ TEST_CASE("a cable cut in mid-batch is reconnected and the reply comes from the 
     CHECK(good(bench.run(cut_in_mid_strobe)));
     CHECK(writes_to(bench, at_load) == 1);
     CHECK(bench.scripted.repeats == 1);
-    CHECK(bench.last_statistics.reconnects == 1);
+    CHECK(bench.last_statistics.reconnects >= 1);
 }
 
 TEST_CASE("when the board forgot the session an unrepeatable batch has an unknown outcome") {
@@ -211,31 +242,32 @@ TEST_CASE("a cable that comes back within patience is waited for, one that does 
 
 namespace {
 
-Task<void> reset_in_mid_batch(SessionBench& bench) {
-    bench.scripted.on_write = [&bench](const DoneWrite&) {
-        bench.scripted.on_write = nullptr;
-        bench.scripted.reset();
+Task<void> reset_in_mid_batch(SessionBench* bench) {
+    bench->scripted.on_write = [bench](const DoneWrite&) {
+        bench->scripted.on_write = nullptr;
+        bench->scripted.reset();
     };
     Result<BatchReply> strobe =
-        co_await bench.registers().run(Lane{0}, bench.strobes(), bench.soon());
+        co_await bench->registers().run(Lane{0}, bench->strobes(), bench->soon());
     CHECK((!strobe && strobe.error().cause == Cause::board_reset));
     // The other lane had nothing under way and hears of it as well, once.
-    const Batch read = bench.reads({"NOTE", "value"}, Lane{1});
-    Result<BatchReply> other = co_await bench.registers().run(Lane{1}, read, bench.soon());
+    const Batch read = reads_note_of_lane_1(*bench);
+    Result<BatchReply> other = co_await bench->registers().run(Lane{1}, read, bench->soon());
     CHECK(good(other));  // first batch of that lane: it knows of no time before
     co_return co_await one_read(bench);
 }
 
-Task<void> reset_between_batches(SessionBench& bench) {
-    const Batch read = bench.reads({"NOTE", "value"}, Lane{1});
-    Result<BatchReply> before = co_await bench.registers().run(Lane{1}, read, bench.soon());
+Task<void> reset_between_batches(SessionBench* bench) {
+    const Batch read = reads_note_of_lane_1(*bench);
+    Result<BatchReply> before = co_await bench->registers().run(Lane{1}, read, bench->soon());
     CHECK(good(before));
-    bench.scripted.reset();
-    Result<BatchReply> hit = co_await bench.registers().run(Lane{0}, bench.strobes(), bench.soon());
+    bench->scripted.reset();
+    Result<BatchReply> hit =
+        co_await bench->registers().run(Lane{0}, bench->strobes(), bench->soon());
     CHECK((!hit && hit.error().cause == Cause::board_reset));
-    Result<BatchReply> told = co_await bench.registers().run(Lane{1}, read, bench.soon());
+    Result<BatchReply> told = co_await bench->registers().run(Lane{1}, read, bench->soon());
     CHECK((!told && told.error().cause == Cause::board_reset));
-    Result<BatchReply> after = co_await bench.registers().run(Lane{1}, read, bench.soon());
+    Result<BatchReply> after = co_await bench->registers().run(Lane{1}, read, bench->soon());
     CHECK(good(after));
     co_return Result<void>{};
 }
@@ -263,11 +295,18 @@ MemoryHook unkind(std::mt19937& random, unsigned one_in) {
     return [&random, one_in](Bytes bytes) -> std::vector<MemoryPiece> {
         if (bytes.empty() || random() % one_in != 0) return {{std::move(bytes), {}}};
         switch (random() % 5) {
-            case 0: bytes[random() % bytes.size()] ^= static_cast<std::byte>(1u << random() % 8); break;
-            case 1: bytes.resize(random() % bytes.size()); break;
-            case 2: return {{bytes, {}}, {bytes, milliseconds(random() % 3)}};
-            case 3: return {{bytes, milliseconds(random() % 400)}};
-            default: return {};
+            case 0:
+                bytes[random() % bytes.size()] ^= static_cast<std::byte>(1u << random() % 8);
+                break;
+            case 1:
+                bytes.resize(random() % bytes.size());
+                break;
+            case 2:
+                return {{bytes, {}}, {bytes, milliseconds(random() % 3)}};
+            case 3:
+                return {{bytes, milliseconds(random() % 400)}};
+            default:
+                return {};
         }
         return {{std::move(bytes), {}}};
     };
@@ -277,27 +316,20 @@ std::mt19937 trouble(1);
 constexpr std::uint32_t transactions = 2000;
 
 // Writes a running number and reads it back; now and then a strobe, which must happen once.
-Task<void> many_transactions(SessionBench& bench) {
-    bench.pair.cable->on_host_writes(unkind(trouble, 20));
-    bench.pair.cable->on_board_writes(unkind(trouble, 20));
+Task<void> many_transactions(SessionBench* bench) {
+    bench->pair.cable->on_host_writes(unkind(trouble, 20));
+    bench->pair.cable->on_board_writes(unkind(trouble, 20));
     std::size_t strobes = 0;
     for (std::uint32_t i = 1; i <= transactions; ++i) {
-        Batch batch = bench.writes_note(i);
-        const bool strobe = i % 3 == 0;
-        if (strobe) {
-            const Result<void> added =
-                bench.map.write_declared(batch, Lane{0}, {"LOAD", "strobe"}, 1);
-            CHECK(good(added));
-        }
-        const Result<void> read = bench.map.read(batch, Lane{0}, {"NOTE", "value"});
-        CHECK(good(read));
-        Result<BatchReply> reply = co_await bench.registers().run(Lane{0}, batch, bench.soon());
+        const Batch batch = transaction(*bench, i);
+        const bool strobe = !batch.repeatable();
+        Result<BatchReply> reply = co_await bench->registers().run(Lane{0}, batch, bench->soon());
         if (!reply) co_return reply.error();
         if (reply->results.at(0) != i || reply->results.back() != i) {
             FAIL("a wrong value was accepted in transaction " << i);
         }
         strobes += strobe ? 1 : 0;
-        if (writes_to(bench, at_load) != strobes) FAIL("a strobe was lost or doubled at " << i);
+        if (writes_to(*bench, at_load) != strobes) FAIL("a strobe was lost or doubled at " << i);
     }
     co_return Result<void>{};
 }
@@ -319,9 +351,9 @@ TEST_CASE("2,000 transactions over an unkind cable give the right values, each w
 
 namespace {
 
-Task<void> read_beside_console(SessionBench& bench) {
-    bench.scripted.say("\r\nkernel: something happened\r\n");
-    co_await bench.time.sleep_until(bench.time.now() + milliseconds(5));
+Task<void> read_beside_console(SessionBench* bench) {
+    bench->scripted.say("\r\nkernel: something happened\r\n");
+    co_await bench->time.sleep_until(bench->time.now() + milliseconds(5));
     co_return co_await one_read(bench);
 }
 
@@ -333,10 +365,10 @@ Task<void> babble(SessionBench* bench, int times) {
     co_return Result<void>{};
 }
 
-Task<void> garbage_only(SessionBench& bench) {
-    bench.scripted.silent = true;
-    TaskGroup helper(bench.io);
-    helper.spawn("babble", babble(&bench, 200));
+Task<void> garbage_only(SessionBench* bench) {
+    bench->scripted.silent = true;
+    TaskGroup helper(bench->io);
+    helper.spawn("babble", babble(bench, 200));
     Result<void> outcome = co_await one_read(bench);
     const Result<void> joined = co_await helper.join();
     co_return outcome;
@@ -362,20 +394,17 @@ TEST_CASE("a board that answers garbage is a timeout and the garbage is counted"
 namespace {
 
 Task<void> long_wait(SessionBench* bench, TimePoint* ended) {
-    Batch batch;
-    const Result<void> added = bench->map.wait_until(batch, Lane{1}, {"MONITOR", "busy"}, 1,
-                                                     std::chrono::microseconds(500000));
-    CHECK(good(added));
+    const Batch batch = waits_half_a_second(*bench);
     Result<BatchReply> reply = co_await bench->registers().run(Lane{1}, batch, bench->soon());
     CHECK((reply && reply->outcome == Outcome::wait_expired));
     *ended = bench->time.now();
     co_return Result<void>{};
 }
 
-Task<void> short_beside_long(SessionBench& bench) {
+Task<void> short_beside_long(SessionBench* bench) {
     TimePoint ended{};
-    TaskGroup helper(bench.io);
-    helper.spawn("long wait", long_wait(&bench, &ended));
+    TaskGroup helper(bench->io);
+    helper.spawn("long wait", long_wait(bench, &ended));
     for (int i = 0; i < 50; ++i) {
         Result<void> read = co_await one_read(bench);
         CHECK(good(read));
@@ -386,30 +415,30 @@ Task<void> short_beside_long(SessionBench& bench) {
     co_return joined;
 }
 
-Task<void> closed_under_way(SessionBench& bench) {
+Task<void> closed_under_way(SessionBench* bench) {
     TimePoint ended{};
-    TaskGroup helper(bench.io);
-    bench.scripted.silent = true;
+    TaskGroup helper(bench->io);
+    bench->scripted.silent = true;
     helper.spawn("read", one_read(bench));
-    co_await bench.time.sleep_until(bench.time.now() + milliseconds(10));
-    const TimePoint began = bench.time.now();
-    const Result<void> closed = co_await bench.board->close();
+    co_await bench->time.sleep_until(bench->time.now() + milliseconds(10));
+    const TimePoint began = bench->time.now();
+    const Result<void> closed = co_await bench->board->close();
     CHECK(good(closed));
     Result<void> read = co_await helper.join();
     CHECK((!read && read.error().cause == Cause::stopped));
-    CHECK(bench.time.now() == began);
+    CHECK(bench->time.now() == began);
     Result<void> later = co_await one_read(bench);
     CHECK((!later && later.error().cause == Cause::stopped));
     co_return Result<void>{};
 }
 
-Task<void> too_early_deadline(SessionBench& bench) {
-    bench.scripted.silent = true;
-    const TimePoint began = bench.time.now();
-    Result<BatchReply> reply = co_await bench.registers().run(
-        Lane{0}, bench.reads({"SCRATCH", "value"}), began + milliseconds(30));
+Task<void> too_early_deadline(SessionBench* bench) {
+    bench->scripted.silent = true;
+    const TimePoint began = bench->time.now();
+    Result<BatchReply> reply =
+        co_await bench->registers().run(Lane{0}, reads_scratch(*bench), began + milliseconds(30));
     CHECK((!reply && reply.error().cause == Cause::timeout));
-    CHECK(bench.time.now() - began == milliseconds(30));
+    CHECK(bench->time.now() - began == milliseconds(30));
     co_return Result<void>{};
 }
 
@@ -429,4 +458,65 @@ TEST_CASE("closing ends whatever is under way at once") {
 TEST_CASE("a caller's deadline is kept even where attempts are left") {
     SessionBench bench;
     CHECK(good(bench.run(too_early_deadline)));
+}
+
+namespace {
+
+MemoryOptions reconnecting_memory() {
+    MemoryOptions options = SessionBench::slow_memory();
+    options.after_deadline = AfterDeadline::reconnect;
+    return options;
+}
+
+// The connection swallows everything the host sends until it is opened anew.
+Task<void> strobe_on_dead_connection(SessionBench* bench) {
+    bench->pair.cable->on_host_writes([bench](Bytes bytes) -> std::vector<MemoryPiece> {
+        const bool dead = bench->statistics().reconnects == 0;
+        return dead ? std::vector<MemoryPiece>{} : std::vector<MemoryPiece>{{std::move(bytes), {}}};
+    });
+    co_return co_await one_strobe(bench);
+}
+
+Task<void> wrong_board_after_reconnection(SessionBench* bench) {
+    bench->scripted.registers[at_id] = 0x4321;
+    bench->pair.cable->cut();
+    co_return co_await one_strobe(bench);
+}
+
+Task<void> reset_while_unplugged(SessionBench* bench) {
+    Result<void> before = co_await one_strobe(bench);
+    CHECK(good(before));
+    bench->pair.cable->unplug();
+    bench->scripted.reset();
+    TaskGroup helper(bench->io);
+    helper.spawn("plug in", plug_in_later(bench));
+    Result<void> outcome = co_await one_strobe(bench);
+    const Result<void> joined = co_await helper.join();
+    co_return outcome;
+}
+
+}  // namespace
+
+TEST_CASE("a connection that went dead without a word is opened anew and the batch done once") {
+    SessionBench bench(reconnecting_memory());
+    CHECK(good(bench.run(strobe_on_dead_connection)));
+    CHECK(bench.last_statistics.reconnects == 1);
+    CHECK(writes_to(bench, at_load) == 1);
+}
+
+TEST_CASE("another board behind the same cable is never written to, and named in the end") {
+    SessionBench bench;
+    const Result<void> outcome = bench.run(wrong_board_after_reconnection);
+    REQUIRE(!outcome);
+    CHECK(outcome.error().cause == Cause::wrong_board);
+    CHECK(bench.scripted.writes.empty());
+}
+
+TEST_CASE("a reset behind a lost cable is told before anything is carried out") {
+    SessionBench bench;
+    const Result<void> outcome = bench.run(reset_while_unplugged);
+    REQUIRE(!outcome);
+    CHECK(outcome.error().cause == Cause::board_reset);
+    CHECK(writes_to(bench, at_load) == 1);  // the one before
+    CHECK(bench.last_statistics.resets == 1);
 }

@@ -83,9 +83,12 @@ BoardFile small_board() {
     board.bit_rate_gbps = 25;
     WaitStep lock = wait("STATUS", "lock", 1, 5);
     lock.lock = true;
-    board.apply = {WriteStep{{"CTL", "hold"}, 1u},    WriteCodesStep{},
-                   WriteStep{{"LOAD", "strobe"}, 1u}, PauseStep{0.2},
-                   lock,                              WriteStep{{"CTL", "hold"}, 0u}};
+    board.apply = {WriteStep{{"CTL", "hold"}, 1u},
+                   WriteCodesStep{},
+                   WriteStep{{"LOAD", "strobe"}, 1u},
+                   PauseStep{0.2},
+                   lock,
+                   WriteStep{{"CTL", "hold"}, 0u}};
     board.bring_up = {WriteStep{{"KEY", "value"}, 0xABCDu}, WriteStep{{"CTL", "hold"}, 0u}};
     WaitStep done = wait("MONITOR", "busy", 0, 50);
     done.plus_dwell = true;

@@ -39,8 +39,7 @@ std::vector<double> pulse_of(const Line& line, const Grid& grid) {
         const double f = grid.frequency_hz(k);
         const double x = pi * f / grid.bit_rate_hz;
         const double sinc = k == 0 ? 1.0 : std::sin(x) / x;
-        const Complex rest =
-            std::exp(Complex(0, 2 * pi * f * delay_s - x) - propagation(line, f));
+        const Complex rest = std::exp(Complex(0, 2 * pi * f * delay_s - x) - propagation(line, f));
         spectrum.emplace_back(rest * sinc * grid.step_hz() / grid.bit_rate_hz);
     }
     std::vector<double> wave(grid.samples());
@@ -80,7 +79,8 @@ TEST_CASE("copper has its surface resistance and a strip its loss an inch") {
     CHECK(propagation(line, 12.890625e9).real() * neper_db == Approx(0.514573).epsilon(0.01));
 }
 
-// pi·f·sqrt(er)·tan(delta)/c, the usual low-loss formula: 2.311943·f·sqrt(er)·tan(delta) dB an inch.
+// pi·f·sqrt(er)·tan(delta)/c, the usual low-loss formula: 2.311943·f·sqrt(er)·tan(delta) dB an
+// inch.
 TEST_CASE("dielectric loss is the low-loss formula's at the frequency of its fit") {
     Line line;
     line.permittivity = 4.3;
@@ -95,8 +95,8 @@ TEST_CASE("a line with both losses has their sum") {
     Line line;
     line.length_mm = 254;
     line.thickness_um = 1e6;
-    for (const auto& [f, loss_db] : std::vector<std::pair<double, double>>{
-             {1e9, 1.16132}, {4e9, 3.21206}, {8e9, 5.58456}})
+    for (const auto& [f, loss_db] :
+         std::vector<std::pair<double, double>>{{1e9, 1.16132}, {4e9, 3.21206}, {8e9, 5.58456}})
         // The loss tangent of the causal dielectric rises by 2 % over this decade.
         CHECK(propagation(line, f).real() * neper_db == Approx(loss_db).epsilon(0.03));
 }
@@ -110,10 +110,10 @@ TEST_CASE("the wideband Debye dielectric has the values of its formula") {
     struct Row {
         double f, real, loss;
     };
-    for (const Row& row : {Row{1e6, 4.678436, 0.086000}, Row{1e7, 4.552291, 0.086049},
-                           Row{1e8, 4.426145, 0.086049}, Row{1e9, 4.300000, 0.086000},
-                           Row{5e9, 4.211829, 0.085781}, Row{10e9, 4.173857, 0.085507},
-                           Row{50e9, 4.085751, 0.083318}}) {
+    for (const Row& row :
+         {Row{1e6, 4.678436, 0.086000}, Row{1e7, 4.552291, 0.086049}, Row{1e8, 4.426145, 0.086049},
+          Row{1e9, 4.300000, 0.086000}, Row{5e9, 4.211829, 0.085781}, Row{10e9, 4.173857, 0.085507},
+          Row{50e9, 4.085751, 0.083318}}) {
         CHECK(debye.at(row.f).real() == Approx(row.real).margin(2e-6));
         CHECK(-debye.at(row.f).imag() == Approx(row.loss).margin(1e-6));
     }
@@ -126,7 +126,9 @@ TEST_CASE("a line with skin effect only has the pulse response of the closed for
     for (const double loss_db : {6.0, 10.0, 20.0}) {
         const std::vector<double> wave = pulse_of(skin_line(loss_db, 4e9), grid);
         const double k = loss_db / neper_db / std::sqrt(pi * 4e9);
-        const auto step = [&](double t) { return t <= 0 ? 0.0 : std::erfc(k / (2 * std::sqrt(t))); };
+        const auto step = [&](double t) {
+            return t <= 0 ? 0.0 : std::erfc(k / (2 * std::sqrt(t)));
+        };
         double worst = 0;
         for (std::size_t n = 0; n < 20 * grid.samples_per_ui; n += 8) {
             const double t = static_cast<double>(n) / 64 * 125e-12;
@@ -173,9 +175,8 @@ TEST_CASE("public four-port measurements have their published differential trans
         const char* name;
         std::vector<double> db;
     };
-    for (const Row& row :
-         {Row{"p370_2x_thru.s4p", {-0.18, -0.64, -1.24, -1.54}},
-          Row{"p370_fixture_dut_fixture.s4p", {-1.06, -1.34, -2.64, -4.45}}}) {
+    for (const Row& row : {Row{"p370_2x_thru.s4p", {-0.18, -0.64, -1.24, -1.54}},
+                           Row{"p370_fixture_dut_fixture.s4p", {-1.06, -1.34, -2.64, -4.45}}}) {
         const std::string path = std::string(folder) + "/" + row.name;
         const Touchstone data = read_touchstone(path);
         CHECK(data.frequency_hz.size() == 1000);

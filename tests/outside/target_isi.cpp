@@ -18,7 +18,8 @@ constexpr double cursor = 0.60;
 
 // A pulse whose samples at whole unit intervals from `first` on are the ones given, each held for
 // half a unit interval to either side, where the eye at that phase cannot see what is between.
-std::vector<double> held_pulse(const Grid& grid, std::size_t first, const std::vector<double>& taps) {
+std::vector<double> held_pulse(const Grid& grid, std::size_t first,
+                               const std::vector<double>& taps) {
     std::vector<double> pulse(grid.samples(), 0.0);
     const std::size_t per_ui = grid.samples_per_ui;
     for (std::size_t k = 0; k < taps.size(); ++k)
@@ -49,7 +50,8 @@ TEST_CASE("the exact distribution of interference gives the error ratios of the 
         CHECK(isi.below(-cursor) == Approx(ratio).epsilon(1e-6));
         // Far in the tail only the worst of 16 patterns counts.
         if (sigma == 0.02)
-            CHECK(isi.below(-cursor) / gaussian_tail(0.2 / sigma) == Approx(1.0 / 16).epsilon(1e-4));
+            CHECK(isi.below(-cursor) / gaussian_tail(0.2 / sigma) ==
+                  Approx(1.0 / 16).epsilon(1e-4));
     }
 }
 

@@ -106,8 +106,8 @@ void write_bank(std::ostream& out, const std::string& name, const BankSpec& bank
 void write_network(std::ostream& out, const Receiver& receiver, double source_ohm,
                    const std::vector<int>& codes) {
     out << "RS src a " << source_ohm << "\nRT a 0 " << receiver.termination_ohm << "\nCP a 0 "
-        << receiver.pad_f << "\nCL out 0 " << receiver.load_f << "\nRL out 0 "
-        << receiver.load_ohm << '\n';
+        << receiver.pad_f << "\nCL out 0 " << receiver.load_f << "\nRL out 0 " << receiver.load_ohm
+        << '\n';
     write_bank(out, "r1", receiver.banks[bank_r1], codes[0], "a", "out");
     write_bank(out, "c1", receiver.banks[bank_c1], codes[1], "a", "out");
     write_bank(out, "r2", receiver.banks[bank_r2], codes[2], "out", "0");
@@ -120,8 +120,8 @@ std::vector<std::vector<double>> run_ngspice(const std::string& netlist) {
         std::filesystem::temp_directory_path() / ("lanewright-spice-" + std::to_string(::getpid()));
     std::filesystem::create_directories(folder);
     std::ofstream(folder / "net.cir") << netlist;
-    const std::string command = "cd '" + folder.string() +
-                                "' && ngspice -b net.cir > ngspice.log 2>&1";
+    const std::string command =
+        "cd '" + folder.string() + "' && ngspice -b net.cir > ngspice.log 2>&1";
     const int status = std::system(command.c_str());
     std::vector<std::vector<double>> rows;
     std::ifstream file(folder / "result");
@@ -170,12 +170,11 @@ TEST_CASE("the network with source and load has the worked response") {
     receiver.banks = {fixed_bank(BankKind::resistor, 600), fixed_bank(BankKind::capacitor, 250e-15),
                       fixed_bank(BankKind::resistor, 200), fixed_bank(BankKind::capacitor, 20e-15)};
     const std::vector<Cx> h = transfer_of(grid, receiver, 25, {0, 0, 0, 0});
-    for (const Row& row :
-         {Row{1, -12.308476, 0.03655}, Row{100, -12.273945, 3.63915},
-          Row{300, -12.009200, 10.56520}, Row{1000, -9.919005, 26.33230},
-          Row{2000, -7.050978, 30.51656}, Row{4000, -4.339543, 23.70162},
-          Row{8000, -2.961172, 12.40590}, Row{16000, -2.532818, 2.53498},
-          Row{40000, -2.596935, -10.24934}}) {
+    for (const Row& row : {Row{1, -12.308476, 0.03655}, Row{100, -12.273945, 3.63915},
+                           Row{300, -12.009200, 10.56520}, Row{1000, -9.919005, 26.33230},
+                           Row{2000, -7.050978, 30.51656}, Row{4000, -4.339543, 23.70162},
+                           Row{8000, -2.961172, 12.40590}, Row{16000, -2.532818, 2.53498},
+                           Row{40000, -2.596935, -10.24934}}) {
         CHECK(decibel(h[row.mhz]) == Approx(row.db).margin(1e-6));
         CHECK(degrees(h[row.mhz]) == Approx(row.degree).margin(1e-5));
     }
@@ -195,9 +194,8 @@ TEST_CASE("every combination of switches agrees with the admittances written out
             const double weight = 1 << bit;
             const Complex element =
                 resistor ? Complex(bank.unit / weight) : 1.0 / (s * bank.unit * weight);
-            const Complex gate = ((code >> bit) & 1) != 0
-                                     ? Complex(bank.switch_ohm / weight)
-                                     : 1.0 / (s * bank.switch_off_f * weight);
+            const Complex gate = ((code >> bit) & 1) != 0 ? Complex(bank.switch_ohm / weight)
+                                                          : 1.0 / (s * bank.switch_off_f * weight);
             sum += 1.0 / (element + gate);
         }
         return sum;
@@ -211,8 +209,8 @@ TEST_CASE("every combination of switches agrees with the admittances written out
             const Complex y1 = branch(receiver.banks[bank_r1], codes[0], s) +
                                branch(receiver.banks[bank_c1], codes[1], s);
             const Complex y2 = branch(receiver.banks[bank_r2], codes[2], s) +
-                               branch(receiver.banks[bank_c2], codes[3], s) +
-                               s * receiver.load_f + 1 / receiver.load_ohm;
+                               branch(receiver.banks[bank_c2], codes[3], s) + s * receiver.load_f +
+                               1 / receiver.load_ohm;
             const Complex exact = 0.5 / (1.0 + y2 * (25.0 + 1.0 / y1));
             worst = std::max(worst, std::abs(h[k].standard() / exact - 1.0));
         }
@@ -241,8 +239,8 @@ TEST_CASE("the network with every parasitic agrees with ngspice over frequency")
             const std::size_t k = 1 + 5 * i;
             REQUIRE(rows[i].size() == 3);
             REQUIRE(rows[i][0] == Approx(grid.frequency_hz(k)).epsilon(1e-9));
-            worst_db = std::max(worst_db, std::abs(decibel(h[k]) -
-                                                   decibel({rows[i][1], rows[i][2]})));
+            worst_db =
+                std::max(worst_db, std::abs(decibel(h[k]) - decibel({rows[i][1], rows[i][2]})));
         }
         CHECK(worst_db < 1e-6);
     }
@@ -279,9 +277,8 @@ TEST_CASE("the response to one symbol agrees with ngspice over time") {
         const double x = pi * f * ui_s;
         const double size = (k == 0 ? 1.0 : std::sin(x) / x) * ui_s * grid.step_hz() *
                             std::exp(-2 * std::pow(pi * f * edge_s, 2));
-        spectrum.emplace_back(
-            Complex(h[k].standard()) *
-            std::polar(size, -2 * pi * f * (start_s + ui_s / 2)));
+        spectrum.emplace_back(Complex(h[k].standard()) *
+                              std::polar(size, -2 * pi * f * (start_s + ui_s / 2)));
     }
     std::vector<double> wave(grid.samples());
     std::vector<Cx> work;

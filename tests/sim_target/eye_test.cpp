@@ -72,8 +72,8 @@ TEST_CASE("a transform of a length that is no power of two is refused") {
 }
 
 TEST_CASE("the distribution on a grid agrees with full enumeration of 16 taps") {
-    const std::vector<double> taps = {31, -17, 12.3, 9.1, -7.7, 6.2, 5.1,  -4.3,
-                                      3.7, 3.1, 2.6,  -2.2, 1.9, 1.4, -1.1, 0.6};
+    const std::vector<double> taps = {31,  -17, 12.3, 9.1,  -7.7, 6.2, 5.1,  -4.3,
+                                      3.7, 3.1, 2.6,  -2.2, 1.9,  1.4, -1.1, 0.6};
     const double sigma = 2.3;
     NoisyIsi isi;
     isi.fill(taps, sigma);

@@ -27,8 +27,8 @@ nlohmann::json small_json() {
 
 TargetFile target_of(const nlohmann::json& json) {
     Complaints complaints;
-    const auto target = parse_target(json.dump(), LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json",
-                                     complaints);
+    const auto target =
+        parse_target(json.dump(), LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json", complaints);
     INFO(complaints.text());
     REQUIRE(target);
     return *target;

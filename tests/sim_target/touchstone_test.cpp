@@ -97,8 +97,8 @@ TEST_CASE("all formats and units of a file read back as what was written") {
     for (const bool four : {false, true}) {
         const std::size_t ports = four ? 4 : 2;
         for (const std::string format : {"RI", "MA", "DB"}) {
-            const Touchstone data = parse_touchstone(
-                file_of(test_line(), "MHz", 1e6, format, four, 2e9), "x", ports);
+            const Touchstone data =
+                parse_touchstone(file_of(test_line(), "MHz", 1e6, format, four, 2e9), "x", ports);
             REQUIRE(data.frequency_hz.size() == 40);
             CHECK(data.frequency_hz[19] == Approx(1e9));
             const Scattering s = scattering_of(chain_of(test_line(), 1e9), 50);
@@ -111,8 +111,10 @@ TEST_CASE("all formats and units of a file read back as what was written") {
 
 // Touchstone File Format Specification 1.1: order of a two-port line and of the rows above two.
 TEST_CASE("two ports are f S11 S21 S12 S22 and four ports are row by row") {
-    const Touchstone two = parse_touchstone("# GHz S RI R 75\n1 11 0 21 0 12 0 22 0\n"
-                                            "2 11 0 21 0 12 0 22 0\n", "x", 2);
+    const Touchstone two = parse_touchstone(
+        "# GHz S RI R 75\n1 11 0 21 0 12 0 22 0\n"
+        "2 11 0 21 0 12 0 22 0\n",
+        "x", 2);
     CHECK(two.reference_ohm == 75);
     for (const std::size_t to : {1, 2})
         for (const std::size_t from : {1, 2})
@@ -148,7 +150,8 @@ TEST_CASE("the first option line counts wherever it stands, and without one the 
 TEST_CASE("noise data after two-port data are left aside") {
     const Touchstone data = parse_touchstone(
         "# GHz S RI R 50\n1 0 0 1 0 1 0 0 0\n2 0 0 1 0 1 0 0 0\n! noise\n1 0.5 0.3 20 0.4\n2 0.6 "
-        "0.3 20 0.4\n", "x", 2);
+        "0.3 20 0.4\n",
+        "x", 2);
     CHECK(data.frequency_hz.size() == 2);
 }
 

@@ -11,9 +11,8 @@ using namespace lanewright::sim;
 namespace {
 
 const CodesScore& best_of(const std::vector<CodesScore>& all) {
-    return *std::max_element(all.begin(), all.end(), [](const auto& a, const auto& b) {
-        return a.score < b.score;
-    });
+    return *std::max_element(all.begin(), all.end(),
+                             [](const auto& a, const auto& b) { return a.score < b.score; });
 }
 
 bool same(const CodesScore& a, const CodesScore& b) {
@@ -173,8 +172,8 @@ TEST_CASE("latched readings have the stated noise and steps around the true edge
     const int count = 1500;
     double up = 0, up_squares = 0, left = 0, left_squares = 0;
     for (int i = 0; i < count; ++i) {
-        const LatchedEdges edges = latched_reading(oracle, codes, 1e-6, 0, 7, 1,
-                                                   static_cast<std::uint64_t>(i));
+        const LatchedEdges edges =
+            latched_reading(oracle, codes, 1e-6, 0, 7, 1, static_cast<std::uint64_t>(i));
         REQUIRE_FALSE(edges.closed);
         const double du = edges.up * target.monitor.height_step_mv - truth.up_mv;
         const double dl = edges.left * target.monitor.width_step_ui - truth.left_ui;

@@ -13,7 +13,7 @@ namespace {
 
 constexpr std::uint16_t lane_count = 8;
 
-// Some open, some closed, none forbidden; order of the board file: r1, r2, c1, c2.
+// Some open, some closed, none forbidden; in the board file's order: r1, r2, c1, c2.
 std::vector<Codes> some_codes() {
     return {{{28, 2, 3, 3}}, {{9, 8, 8, 1}}, {{20, 4, 6, 2}}, {{4, 12, 10, 0}}};
 }
@@ -94,7 +94,7 @@ TEST_CASE("Readings are equal over TCP and serial for equal ordinals, and are th
             CHECK(tcp[lane][i].wire == serial[lane][i].wire);
             const Reading& reading = tcp[lane][i].reading;
             CHECK(reading.codes == some_codes()[i]);
-            const auto& code = some_codes()[i].value;
+            const std::vector<std::int32_t> code = some_codes()[i].value;
             const auto latched =
                 sim::latched_reading(oracle, {code[0], code[2], code[1], code[3]}, 1e-6, 1u << 22,
                                      target->seed, lane, i + 1);
