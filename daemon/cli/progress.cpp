@@ -17,7 +17,7 @@ constexpr auto between_draws = std::chrono::milliseconds(100);
 // Strategies say why they read in a sentence; its first words name the phase.
 std::string short_phase(const std::string& why) {
     const std::string phase = why.substr(0, why.find(':'));
-    return phase.size() <= 24 ? phase : phase.substr(0, 24);
+    return phase.size() <= 20 ? phase : phase.substr(0, 20);
 }
 
 }  // namespace
@@ -91,7 +91,7 @@ std::string Progress::line_of(std::uint16_t lane, const LaneLine& line) const {
     char score[16] = "-";
     if (line.best_score) std::snprintf(score, sizeof score, "%.2f", *line.best_score);
     char text[160];
-    std::snprintf(text, sizeof text, "lane %2u  %-24s best %6s  %4zu readings  %6.1f s  %s",
+    std::snprintf(text, sizeof text, "lane %2u  %-20s best %5s %4zu readings %6.1f s  %s",
                   static_cast<unsigned>(lane), line.phase.c_str(), score, line.reading_count,
                   line.bench_s, time_left(line).c_str());
     return std::string(text).substr(0, columns);

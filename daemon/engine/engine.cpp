@@ -4,6 +4,7 @@
 #include <map>
 #include <memory>
 #include <optional>
+#include <set>
 #include <utility>
 
 #include "drivers/io/task_group.hpp"
@@ -76,7 +77,7 @@ class Engine {
     RunState state_;
     std::map<std::uint16_t, LaneJob> jobs_;
     TimePoint started_{};
-    std::uint64_t resets_told_ = 0;
+    std::uint64_t resets_known_ = 0;
     bool failed_ = false;  // a lane met what ends the run, or the store does
     std::string unsettled_;  // what could not be put where it belongs, for the run's last words
 };
@@ -162,7 +163,9 @@ Task<bool> Engine::measure(Lane lane, DoMeasure what) {
     if (auto stored = co_await std::move(intending); !stored) co_return stored.error();
     auto taken = co_await bench_.reader.read(lane, what.request, what.ordinal);
     if (!taken) co_return co_await reading_failed(lane, std::move(what), taken.error());
-    taken->reading.cost_s = cost_s(cost_model_of(plan_.board), what.request);
+    if (taken->reading.cost_s <= 0) {
+        taken->reading.cost_s = cost_s(cost_model_of(plan_.board), what.request);
+    }
     auto storing = append(ReadingTaken{lane, what.ordinal, what.attempt, std::move(taken->reading),
                                        std::move(taken->wire)});
     if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
@@ -172,10 +175,9 @@ Task<bool> Engine::measure(Lane lane, DoMeasure what) {
 // After a reset every lane of the board holds its reset codes, those that had been settled too.
 void Engine::board_was_reset() {
     const std::uint64_t resets = bench_.link_counts().resets;
-    if (resets != resets_told_) {
-        resets_told_ = resets;
-        bench_.say("the board has reset; lanes outside this run hold their reset codes now");
-    }
+    if (resets == resets_known_) return;  // another lane has told; lanes may be settled again by now
+    resets_known_ = resets;
+    bench_.say("the board has reset; lanes outside this run hold their reset codes now");
     bool changed = false;
     for (auto& [number_of_lane, lane] : state_.lanes) {
         if (!lane.saved || lane.moved) continue;
@@ -330,21 +332,30 @@ Task<void> Engine::run_waves() {
     co_return Result<void>{};
 }
 
-// Lanes that an early end, or a reset after they were settled, left in codes nobody wants.
+// Lanes that an early end, or a reset after they were settled, left in codes nobody wants. A reset
+// meanwhile undoes what was settled before it, so there is more than one pass.
 Task<void> Engine::settle_rest() {
+    constexpr int passes = 3;
     Result<void> outcome;
-    for (auto& [number_of_lane, lane] : state_.lanes) {
+    std::set<std::uint16_t> given_up;
+    for (int pass = 0; pass < passes; ++pass) {
+        for (auto& [number_of_lane, lane] : state_.lanes) {
+            if (!lane.saved || !lane.moved || given_up.contains(number_of_lane)) continue;
+            const Settlement settlement =
+                keeps_decision(lane) ? Settlement::decided : Settlement::restored;
+            const Codes codes = codes_of(resting(lane));
+            auto settled = co_await settle(Lane{number_of_lane}, settlement, codes);
+            if (settled || !lane.moved) continue;  // on the board, even if it could not be stored
+            given_up.insert(number_of_lane);
+            if (outcome) outcome = settled.error();
+        }
+    }
+    for (const auto& [number_of_lane, lane] : state_.lanes) {
         if (!lane.saved || !lane.moved) {
             plan_.note.drop(Lane{number_of_lane});
-            continue;
+        } else {
+            unsettled_ += (unsettled_.empty() ? "" : ", ") + std::to_string(number_of_lane);
         }
-        const Settlement settlement =
-            keeps_decision(lane) ? Settlement::decided : Settlement::restored;
-        const Codes codes = codes_of(resting(lane));
-        auto settled = co_await settle(Lane{number_of_lane}, settlement, codes);
-        if (settled || !lane.moved) continue;  // on the board, even if it could not be stored
-        unsettled_ += (unsettled_.empty() ? "" : ", ") + std::to_string(number_of_lane);
-        if (outcome) outcome = settled.error();
     }
     if (auto noted = note_changed(); !noted && outcome) outcome = noted.error();
     co_return outcome;
@@ -376,6 +387,7 @@ RunEnded Engine::ended(const Result<void>& outcome) const {
 
 Task<RunEnded> Engine::run(std::vector<StoredEvent> history) {
     started_ = bench_.time.now();
+    resets_known_ = bench_.link_counts().resets;
     make_jobs();
     take_history(history);
     Result<void> outcome = co_await save_lanes();

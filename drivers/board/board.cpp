@@ -46,28 +46,6 @@ Fault bad_config(const BoardFile& file, std::string what, std::string hint) {
 
 // Parameters of coroutines are values: references of a caller may be gone when one goes on.
 Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link, TimeSource* time,
-                                      std::optional<std::uint32_t> session_number);
-
-}  // namespace
-
-Board::Board(BoardFile file, std::unique_ptr<Link> link, std::unique_ptr<Dialect> dialect,
-             TimeSource& time)
-    : time_(time),
-      file_(std::move(file)),
-      map_(file_),
-      identity_(map_, file_.identity),
-      session_(time, std::move(link), std::move(dialect), options_of(file_), probe_of(identity_)),
-      reader_(file_, map_, session_, time) {}
-
-Task<std::unique_ptr<Board>> open_board(BoardFile file, std::unique_ptr<Link> link,
-                                        TimeSource& time,
-                                        std::optional<std::uint32_t> session_number) {
-    return open_one(std::move(file), std::move(link), &time, session_number);
-}
-
-namespace {
-
-Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link, TimeSource* time,
                                       std::optional<std::uint32_t> session_number) {
     const DialectEntry* entry = find_dialect(file.dialect.name);
     if (entry == nullptr) {
@@ -93,5 +71,20 @@ Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link
 }
 
 }  // namespace
+
+Board::Board(BoardFile file, std::unique_ptr<Link> link, std::unique_ptr<Dialect> dialect,
+             TimeSource& time)
+    : time_(time),
+      file_(std::move(file)),
+      map_(file_),
+      identity_(map_, file_.identity),
+      session_(time, std::move(link), std::move(dialect), options_of(file_), probe_of(identity_)),
+      reader_(file_, map_, session_, time) {}
+
+Task<std::unique_ptr<Board>> open_board(BoardFile file, std::unique_ptr<Link> link,
+                                        TimeSource& time,
+                                        std::optional<std::uint32_t> session_number) {
+    return open_one(std::move(file), std::move(link), &time, session_number);
+}
 
 }  // namespace lanewright

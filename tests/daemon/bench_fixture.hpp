@@ -109,7 +109,7 @@ class EngineBench {
                     stop,
                     endpoint->note_path(),
                     {&watcher},
-                    [] { return LinkCounts{}; },
+                    [&board] { return LinkCounts{0, 0, 0, 0, board.resets}; },
                     [&out](const std::string& text) { out.said.push_back(text); }};
         TuneRequest request;
         request.board = demo_board();

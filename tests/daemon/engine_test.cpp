@@ -307,3 +307,21 @@ TEST_CASE("A second process on the same endpoint is told who holds it") {
     CHECK(start.outcome.error().cause == Cause::busy);
     CHECK(start.outcome.error().text().find(std::to_string(::getpid())) != std::string::npos);
 }
+
+TEST_CASE("A reset while the last lanes are settled undoes no lane for good") {
+    EngineBench bench;
+    int restores = 0;
+    const Start start = bench.start({}, [&restores](FakeBoard& board) {
+        board.before_operation = [&restores, &board](const std::string& what, Lane) {
+            if (what != "restore" || ++restores != 3) return Fault{};
+            board.reset();
+            return fault_of(Cause::board_reset, "the board has reset");
+        };
+    });
+    REQUIRE(start.outcome.has_value());
+    CHECK(start.outcome->ended.ending == Ending::complete);
+    for (const auto& [lane, state] : start.state.lanes) {
+        CHECK(bench.board_codes.at(lane) == state.decision->codes);
+    }
+    CHECK_FALSE(std::filesystem::exists(bench.note_path));
+}

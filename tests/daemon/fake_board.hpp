@@ -33,7 +33,10 @@ class FakeBoard : public LaneReader {
     std::map<std::uint16_t, Codes> codes_;
     std::uint32_t serial = 7;
 
+    std::uint64_t resets = 0;
+
     void reset() {
+        ++resets;
         for (auto& [lane, codes] : codes_) codes = reset_codes();
     }
 

@@ -91,13 +91,24 @@ Fault failure_to_open(const nlohmann::json& target, bool serial = false) {
     return opened.error();
 }
 
+// A process that holds the lock on the path until the end of the object.
 class LockHolder {
   public:
-    explicit LockHolder(const std::string& path) : pid_(::fork()) {
-        if (pid_ != 0) return;
-        const int fd = ::open(path.c_str(), O_RDWR | O_NOCTTY | O_NONBLOCK);
-        if (::flock(fd, LOCK_EX | LOCK_NB) != 0) ::_exit(1);
-        for (;;) ::pause();
+    explicit LockHolder(const std::string& path) {
+        int ready[2];
+        REQUIRE(::pipe(ready) == 0);
+        pid_ = ::fork();
+        if (pid_ == 0) {
+            const int fd = ::open(path.c_str(), O_RDWR | O_NOCTTY | O_NONBLOCK);
+            const char locked = ::flock(fd, LOCK_EX | LOCK_NB) == 0 ? 'y' : 'n';
+            if (::write(ready[1], &locked, 1) != 1) ::_exit(1);
+            for (;;) ::pause();
+        }
+        char locked = 'n';
+        REQUIRE(::read(ready[0], &locked, 1) == 1);
+        REQUIRE(locked == 'y');
+        ::close(ready[0]);
+        ::close(ready[1]);
     }
     ~LockHolder() {
         ::kill(pid_, SIGKILL);
@@ -108,7 +119,7 @@ class LockHolder {
     pid_t pid() const { return pid_; }
 
   private:
-    pid_t pid_;
+    pid_t pid_ = 0;
 };
 
 }  // namespace
@@ -187,14 +198,10 @@ TEST_CASE("Another board on the right port is refused with both identities") {
 TEST_CASE("A port held by another process is refused with its pid") {
     TargetProcess process(demo_target());
     LockHolder holder(process.pty_path());
-    // The holder needs a moment to take the lock.
-    Fault fault;
-    for (int i = 0; i < 100 && fault.cause != Cause::busy; ++i) {
-        WireBench bench(demo_board(process.serial()));
-        const auto opened = bench.open();
-        if (opened.has_error()) fault = opened.error();
-        ::usleep(5'000);
-    }
+    WireBench bench(demo_board(process.serial()));
+    const auto opened = bench.open();
+    REQUIRE(opened.has_error());
+    const Fault& fault = opened.error();
     INFO(fault.text());
     CHECK(fault.cause == Cause::busy);
     CHECK(fault.text().find("process " + std::to_string(holder.pid())) != std::string::npos);
