@@ -14,13 +14,13 @@ std::unique_ptr<Link> make_link(TimeSource& time, const LinkDescription& descrip
     }
     const auto& serial = std::get<SerialLinkDescription>(description);
     const std::chrono::duration<double, std::milli> settle(serial.settle_ms);
-    return make_serial_link(
-        time, {.path = serial.path,
-               .baud = serial.baud,
-               .settle = std::chrono::duration_cast<std::chrono::nanoseconds>(settle),
-               .dtr = serial.dtr,
-               .rts = serial.rts,
-               .hang_up_on_close = serial.hang_up_on_close});
+    return make_serial_link(time,
+                            {.path = serial.path,
+                             .baud = serial.baud,
+                             .settle = std::chrono::duration_cast<std::chrono::nanoseconds>(settle),
+                             .dtr = serial.dtr,
+                             .rts = serial.rts,
+                             .hang_up_on_close = serial.hang_up_on_close});
 }
 
 }  // namespace lanewright

@@ -32,7 +32,8 @@ struct LoopWatch::State {
         const auto spent = processor_time_of_thread();
         if (last.count() >= 0) raise_to(busy_ns, (spent - last).count());
         last = spent;
-        raise_to(delay_ns, std::chrono::nanoseconds(std::chrono::steady_clock::now() - sent).count());
+        raise_to(delay_ns,
+                 std::chrono::nanoseconds(std::chrono::steady_clock::now() - sent).count());
         probe_under_way = false;
     }
 };

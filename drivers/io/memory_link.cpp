@@ -20,9 +20,10 @@ struct Side {
     std::deque<std::byte> received;
     Signal arrived;  // raised: bytes are there, or the link has changed
     bool open = false;
-    std::uint64_t opened = 0;  // a read that outlives its opening must not take the next one's bytes
-    MemoryHook hook;           // on what this side writes
-    TimePoint line_free{};     // when the last byte it wrote has left
+    std::uint64_t opened =
+        0;                  // a read that outlives its opening must not take the next one's bytes
+    MemoryHook hook;        // on what this side writes
+    TimePoint line_free{};  // when the last byte it wrote has left
 };
 
 class Cable final : public MemoryCable, public std::enable_shared_from_this<Cable> {

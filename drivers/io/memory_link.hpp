@@ -33,10 +33,10 @@ struct MemoryOptions {
 class MemoryCable {
   public:
     virtual ~MemoryCable() = default;
-    virtual void on_host_writes(MemoryHook hook) = 0;   // empty: bytes pass as they are
+    virtual void on_host_writes(MemoryHook hook) = 0;  // empty: bytes pass as they are
     virtual void on_board_writes(MemoryHook hook) = 0;
-    virtual void cut() = 0;       // both ends lose the link; bytes on the way are lost
-    virtual void unplug() = 0;    // cut, and open() fails until plugged in
+    virtual void cut() = 0;     // both ends lose the link; bytes on the way are lost
+    virtual void unplug() = 0;  // cut, and open() fails until plugged in
     virtual void plug_in() = 0;
 };
 

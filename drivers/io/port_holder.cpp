@@ -1,14 +1,14 @@
 #include "drivers/io/port_holder.hpp"
 
+#include <sys/stat.h>
+#include <sys/sysmacros.h>
+#include <unistd.h>
 #include <charconv>
 #include <cstdio>
 #include <filesystem>
 #include <fstream>
 #include <sstream>
 #include <string_view>
-#include <sys/stat.h>
-#include <sys/sysmacros.h>
-#include <unistd.h>
 
 namespace lanewright {
 
@@ -47,7 +47,7 @@ bool has_open(const std::filesystem::path& process, const struct stat& wanted) {
     std::error_code failed;
     std::filesystem::directory_iterator files(process / "fd", failed), end;
     for (; !failed && files != end; files.increment(failed)) {
-        struct stat seen {};
+        struct stat seen{};
         if (::stat(files->path().c_str(), &seen) != 0) continue;
         if (seen.st_ino == wanted.st_ino && seen.st_dev == wanted.st_dev) return true;
     }
@@ -67,7 +67,7 @@ std::optional<pid_t> process_with_open(const struct stat& wanted) {
 }  // namespace
 
 std::optional<Holder> find_holder(int fd) {
-    struct stat file {};
+    struct stat file{};
     if (::fstat(fd, &file) != 0) return std::nullopt;
     auto pid = holder_of_lock(file);
     if (!pid) pid = process_with_open(file);

@@ -3,9 +3,9 @@
 // Ownership: nothing kept.
 // Threads:   any; reads /proc, milliseconds: only on the way to a failure.
 
+#include <sys/types.h>
 #include <optional>
 #include <string>
-#include <sys/types.h>
 
 namespace lanewright {
 

@@ -1,15 +1,15 @@
 #include "drivers/io/serial_link.hpp"
 
+#include <fcntl.h>
+#include <sys/file.h>
+#include <unistd.h>
 #include <boost/asio/as_tuple.hpp>
 #include <boost/asio/posix/stream_descriptor.hpp>
 #include <boost/asio/use_awaitable.hpp>
 #include <boost/asio/write.hpp>
 #include <cerrno>
 #include <cstring>
-#include <fcntl.h>
 #include <filesystem>
-#include <sys/file.h>
-#include <unistd.h>
 
 #include "drivers/io/port_holder.hpp"
 #include "drivers/io/serial_setup.hpp"
@@ -64,7 +64,8 @@ std::string list_of_others(const fs::path& resolved) {
     for (fs::directory_iterator it("/dev", ignored), end; !ignored && it != end;
          it.increment(ignored)) {
         const std::string other = it->path().filename().string();
-        if (other.starts_with(stem) && other != name) others += (others.empty() ? "" : ", ") + other;
+        if (other.starts_with(stem) && other != name)
+            others += (others.empty() ? "" : ", ") + other;
     }
     return others;
 }
@@ -115,15 +116,16 @@ class SerialLink final : public Link {
         if (!port) co_return unreachable("the link is closed");
         const std::chrono::duration<double> takes(static_cast<double>(bytes.size()) /
                                                   traits_.bytes_per_s);
-        const auto patience = least_write_patience +
-                              2 * std::chrono::duration_cast<std::chrono::nanoseconds>(takes);
+        const auto patience =
+            least_write_patience + 2 * std::chrono::duration_cast<std::chrono::nanoseconds>(takes);
         bool too_slow = false;
         const Alarm alarm(time_, time_.now() + patience, [port, &too_slow] {
             too_slow = true;
             error_code ignored;
             port->cancel(ignored);
         });
-        const auto [failed, size] = co_await asio::async_write(*port, asio::buffer(bytes), use_tuple);
+        const auto [failed, size] =
+            co_await asio::async_write(*port, asio::buffer(bytes), use_tuple);
         if (!failed) co_return Result<void>{};
         Fault fault = lost(port, failed);
         if (too_slow) fault.what = traits_.name + ": the port takes no bytes";
@@ -152,7 +154,9 @@ class SerialLink final : public Link {
         return ::open(settings_.path.c_str(), O_RDWR | O_NOCTTY | O_NONBLOCK | O_CLOEXEC);
     }
 
-    Fault unreachable(std::string what) const { return fault_of(Cause::unreachable, std::move(what)); }
+    Fault unreachable(std::string what) const {
+        return fault_of(Cause::unreachable, std::move(what));
+    }
 
     Fault fault_of(Cause cause, std::string what, std::string hint = {}) const {
         Fault fault;
@@ -191,16 +195,15 @@ class SerialLink final : public Link {
         const bool numbered = resolved == fs::path(settings_.path);
         const std::string others = numbered ? list_of_others(resolved) : std::string();
         if (!others.empty()) {
-            return fault_of(Cause::bad_config,
-                            "this name changes with the order of plugging in, and there is also " +
-                                others,
-                            "Name the port as in /dev/serial/by-id or /dev/serial/by-path.");
+            return fault_of(
+                Cause::bad_config,
+                "this name changes with the order of plugging in, and there is also " + others,
+                "Name the port as in /dev/serial/by-id or /dev/serial/by-path.");
         }
         // A pseudo-terminal's other side may keep it open, and the mark would outlive us there.
         if (!is_pseudo_terminal(file.get())) file.hold();
         const std::string wrong = configure_line(
-            file.get(),
-            {.baud = settings_.baud, .hang_up_on_close = settings_.hang_up_on_close});
+            file.get(), {.baud = settings_.baud, .hang_up_on_close = settings_.hang_up_on_close});
         if (!wrong.empty()) return fault_of(Cause::bad_config, wrong);
         const std::string lines = set_modem_lines(file.get(), settings_.dtr, settings_.rts);
         if (!lines.empty()) return fault_of(Cause::io, lines);

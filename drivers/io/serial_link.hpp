@@ -20,9 +20,9 @@ namespace lanewright {
 struct SerialSettings {
     std::string path;
     std::uint32_t baud = 921600;
-    std::chrono::nanoseconds settle{};  // quiet time after opening; then input is dropped
+    std::chrono::nanoseconds settle{};       // quiet time after opening; then input is dropped
     std::optional<bool> dtr = {}, rts = {};  // idle level; absent: as the kernel leaves it
-    bool hang_up_on_close = false;      // HUPCL: dropping DTR resets many boards
+    bool hang_up_on_close = false;           // HUPCL: dropping DTR resets many boards
 };
 
 std::unique_ptr<Link> make_serial_link(TimeSource& time, SerialSettings settings);

@@ -1,22 +1,26 @@
 #include "drivers/io/serial_setup.hpp"
 
 #include <asm/termbits.h>
-#include <cerrno>
-#include <cmath>
-#include <cstring>
-#include <fstream>
 #include <linux/serial.h>
 #include <sys/ioctl.h>
 #include <sys/stat.h>
 #include <sys/sysmacros.h>
+#include <cerrno>
+#include <cmath>
+#include <cstring>
+#include <fstream>
 
 namespace lanewright {
 
 namespace {
 
-std::string because(const char* what) { return std::string(what) + ": " + std::strerror(errno); }
+std::string because(const char* what) {
+    return std::string(what) + ": " + std::strerror(errno);
+}
 
-bool lacks_the_call() { return errno == ENOTTY || errno == EINVAL || errno == ENOSYS; }
+bool lacks_the_call() {
+    return errno == ENOTTY || errno == EINVAL || errno == ENOSYS;
+}
 
 // An adapter that divides its clock may be this far off; an 8N1 byte survives it.
 bool near_enough(std::uint32_t wanted, std::uint32_t got) {
@@ -33,7 +37,7 @@ std::optional<int> read_number(const std::string& path) {
 }  // namespace
 
 std::string configure_line(int fd, const SerialLine& line) {
-    struct termios2 settings {};
+    struct termios2 settings{};
     if (::ioctl(fd, TCGETS2, &settings) != 0) return because("not a serial port");
     settings.c_iflag = 0;
     settings.c_oflag = 0;
@@ -47,7 +51,7 @@ std::string configure_line(int fd, const SerialLine& line) {
     if (::ioctl(fd, TCSETS2, &settings) != 0) {
         return because(("no line of " + std::to_string(line.baud) + " baud, 8N1").c_str());
     }
-    struct termios2 got {};
+    struct termios2 got{};
     if (::ioctl(fd, TCGETS2, &got) != 0) return because("settings not read back");
     if (!near_enough(line.baud, got.c_ospeed) || !near_enough(line.baud, got.c_ispeed)) {
         return "the port does " + std::to_string(got.c_ospeed) + " baud, not " +
@@ -69,10 +73,12 @@ std::string set_modem_lines(int fd, std::optional<bool> dtr, std::optional<bool>
     return {};
 }
 
-void drop_pending_bytes(int fd) { ::ioctl(fd, TCFLSH, TCIOFLUSH); }
+void drop_pending_bytes(int fd) {
+    ::ioctl(fd, TCFLSH, TCIOFLUSH);
+}
 
 bool is_pseudo_terminal(int fd) {
-    struct stat status {};
+    struct stat status{};
     if (::fstat(fd, &status) != 0 || !S_ISCHR(status.st_mode)) return false;
     // Unix98 pseudo-terminal slaves have the majors 136 to 143 (Linux, Documentation/admin-guide/
     // devices.txt).
@@ -85,10 +91,12 @@ bool is_held_exclusively(int fd) {
     return ::ioctl(fd, TIOCGEXCL, &exclusive) == 0 && exclusive != 0;
 }
 
-void hold_exclusively(int fd, bool held) { ::ioctl(fd, held ? TIOCEXCL : TIOCNXCL); }
+void hold_exclusively(int fd, bool held) {
+    ::ioctl(fd, held ? TIOCEXCL : TIOCNXCL);
+}
 
 std::string ask_for_low_latency(int fd, const std::string& device_name, const std::string& sysfs) {
-    struct serial_struct driver {};
+    struct serial_struct driver{};
     if (::ioctl(fd, TIOCGSERIAL, &driver) == 0) {
         driver.flags |= ASYNC_LOW_LATENCY;
         ::ioctl(fd, TIOCSSERIAL, &driver);

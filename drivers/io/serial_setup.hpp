@@ -25,8 +25,8 @@ std::string set_modem_lines(int fd, std::optional<bool> dtr, std::optional<bool>
 void drop_pending_bytes(int fd);
 
 bool is_pseudo_terminal(int fd);
-bool is_held_exclusively(int fd);             // TIOCGEXCL
-void hold_exclusively(int fd, bool held);     // TIOCEXCL, TIOCNXCL
+bool is_held_exclusively(int fd);          // TIOCGEXCL
+void hold_exclusively(int fd, bool held);  // TIOCEXCL, TIOCNXCL
 
 // Asks the driver for low latency. A warning with what to do if the adapter still collects bytes
 // for more than 2 ms, else empty. `sysfs` is /sys, or a copy of its shape in a test.

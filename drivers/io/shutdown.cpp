@@ -1,8 +1,8 @@
 #include "drivers/io/shutdown.hpp"
 
+#include <unistd.h>
 #include <boost/asio/signal_set.hpp>
 #include <csignal>
-#include <unistd.h>
 
 namespace lanewright {
 
@@ -14,14 +14,14 @@ struct ShutdownSignals::State : std::enable_shared_from_this<State> {
     int first = 0;
 
     void listen() {
-        signals.async_wait([self = shared_from_this()](const boost::system::error_code& failed,
-                                                       int number) {
-            if (failed) return;
-            if (self->first != 0) ::_exit(128 + number);
-            self->first = number;
-            self->stop.request();
-            self->listen();
-        });
+        signals.async_wait(
+            [self = shared_from_this()](const boost::system::error_code& failed, int number) {
+                if (failed) return;
+                if (self->first != 0) ::_exit(128 + number);
+                self->first = number;
+                self->stop.request();
+                self->listen();
+            });
     }
 };
 
@@ -36,6 +36,8 @@ ShutdownSignals::~ShutdownSignals() {
     state_->signals.cancel(ignored);
 }
 
-int ShutdownSignals::received() const { return state_->first; }
+int ShutdownSignals::received() const {
+    return state_->first;
+}
 
 }  // namespace lanewright

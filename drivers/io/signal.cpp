@@ -50,7 +50,9 @@ Waiter::Waiter(std::shared_ptr<SignalState> its_signal)
       event(signal->io, boost::asio::steady_timer::time_point::max()),
       place(signal->waiters.insert(signal->waiters.end(), this)) {}
 
-Waiter::~Waiter() { signal->waiters.erase(place); }
+Waiter::~Waiter() {
+    signal->waiters.erase(place);
+}
 
 void Waiter::wake(Woke why) {
     if (woke) return;
@@ -71,9 +73,13 @@ void add_watched(std::vector<std::weak_ptr<T>>& list, const std::shared_ptr<T>& 
 
 Stop::Stop(boost::asio::io_context& io) : state_(std::make_shared<detail::StopState>(io)) {}
 
-void Stop::request() { state_->request(); }
+void Stop::request() {
+    state_->request();
+}
 
-bool Stop::requested() const { return state_->requested; }
+bool Stop::requested() const {
+    return state_->requested;
+}
 
 void Stop::post_request() {
     boost::asio::post(state_->io, [state = state_] { state->request(); });
@@ -109,12 +115,20 @@ Signal::~Signal() {
     state_->wake_all(Woke::stopped);
 }
 
-void Signal::raise() { state_->raise(); }
+void Signal::raise() {
+    state_->raise();
+}
 
-void Signal::lower() { state_->count = 0; }
+void Signal::lower() {
+    state_->count = 0;
+}
 
-bool Signal::raised() const { return state_->count > 0; }
+bool Signal::raised() const {
+    return state_->count > 0;
+}
 
-Poster Signal::poster() const { return Poster(&state_->io, state_); }
+Poster Signal::poster() const {
+    return Poster(&state_->io, state_);
+}
 
 }  // namespace lanewright

@@ -24,7 +24,8 @@ struct TaskGroup::State {
     std::optional<Fault> first;
 
     void keep(Fault fault) {
-        const bool better = !first || (first->cause == Cause::stopped && fault.cause != Cause::stopped);
+        const bool better =
+            !first || (first->cause == Cause::stopped && fault.cause != Cause::stopped);
         if (better) first = std::move(fault);
     }
 
@@ -76,11 +77,17 @@ void TaskGroup::spawn(std::string name, Task<void> task) {
                    });
 }
 
-void TaskGroup::stop() { state_->stop.request(); }
+void TaskGroup::stop() {
+    state_->stop.request();
+}
 
-bool TaskGroup::stopping() const { return state_->stop.requested(); }
+bool TaskGroup::stopping() const {
+    return state_->stop.requested();
+}
 
-Stop TaskGroup::stop_of_tasks() const { return state_->stop; }
+Stop TaskGroup::stop_of_tasks() const {
+    return state_->stop;
+}
 
 Task<void> TaskGroup::join() {
     const auto state = state_;

@@ -1,11 +1,11 @@
 #include "drivers/io/tcp_link.hpp"
 
+#include <netinet/tcp.h>
+#include <sys/socket.h>
 #include <boost/asio/as_tuple.hpp>
 #include <boost/asio/ip/tcp.hpp>
 #include <boost/asio/use_awaitable.hpp>
 #include <boost/asio/write.hpp>
-#include <netinet/tcp.h>
-#include <sys/socket.h>
 
 namespace lanewright {
 
@@ -75,8 +75,8 @@ class TcpLink final : public Link {
     Task<std::size_t> read_some(std::span<std::byte> buffer) override {
         const auto socket = socket_;
         if (!socket) co_return unreachable(traits_.name, "the link is closed");
-        const auto [failed, size] = co_await socket->async_read_some(
-            asio::buffer(buffer.data(), buffer.size()), use_tuple);
+        const auto [failed, size] =
+            co_await socket->async_read_some(asio::buffer(buffer.data(), buffer.size()), use_tuple);
         if (!failed) co_return size;
         co_return lost(socket, failed);
     }
@@ -90,7 +90,8 @@ class TcpLink final : public Link {
             error_code ignored;
             socket->close(ignored);
         });
-        const auto [failed, size] = co_await asio::async_write(*socket, asio::buffer(bytes), use_tuple);
+        const auto [failed, size] =
+            co_await asio::async_write(*socket, asio::buffer(bytes), use_tuple);
         if (!failed) co_return Result<void>{};
         Fault fault = lost(socket, failed);
         if (too_slow) fault.what = traits_.name + ": the other side takes no bytes";

@@ -58,9 +58,13 @@ Alarm::~Alarm() {
 
 SteadyTimeSource::SteadyTimeSource(asio::io_context& io) : TimeSource(io), timer_(io) {}
 
-SteadyTimeSource::~SteadyTimeSource() { *alive_ = false; }
+SteadyTimeSource::~SteadyTimeSource() {
+    *alive_ = false;
+}
 
-void SteadyTimeSource::run() { io().run(); }
+void SteadyTimeSource::run() {
+    io().run();
+}
 
 // A timer that is armed too early is left alone: it rings nothing and is armed anew then. So the
 // common case, a deadline that is set and dropped again, costs no change of the timer.

@@ -69,8 +69,12 @@ Task<Turnstile::Pass> Turnstile::enter(TimeSource& time, TimePoint until, Stop s
     co_return fault;
 }
 
-std::size_t Turnstile::waiting() const { return state_->line.size(); }
+std::size_t Turnstile::waiting() const {
+    return state_->line.size();
+}
 
-bool Turnstile::taken() const { return state_->taken; }
+bool Turnstile::taken() const {
+    return state_->taken;
+}
 
 }  // namespace lanewright

@@ -17,12 +17,13 @@ struct Workers::Pool {
 Workers::Workers(TimeSource& time, unsigned threads)
     : time_(time), pool_(std::make_unique<Pool>(threads == 0 ? 1 : threads)) {}
 
-Workers::~Workers() { pool_->threads_of_pool.join(); }
+Workers::~Workers() {
+    pool_->threads_of_pool.join();
+}
 
 asio::awaitable<void> Workers::run_there(std::function<void()> job) {
     struct Call {
-        explicit Call(asio::io_context& io)
-            : event(io, asio::steady_timer::time_point::max()) {}
+        explicit Call(asio::io_context& io) : event(io, asio::steady_timer::time_point::max()) {}
         asio::steady_timer event;  // touched on the io thread only
         bool done = false;
     };

@@ -105,18 +105,18 @@ std::shared_ptr<Board::Session> Board::session_for(const Hello& said, bool& resu
     }
     resumed = false;
     if (sessions_.size() >= limits_.sessions) forget_oldest();
-    sessions_.push_back(std::make_shared<Session>(said.session, limits_.slots,
-                                                  tasks_.stop_of_tasks().child()));
+    sessions_.push_back(
+        std::make_shared<Session>(said.session, limits_.slots, tasks_.stop_of_tasks().child()));
     return sessions_.back();
 }
 
 // One without a link goes first.
 void Board::forget_oldest() {
-    const auto oldest = std::min_element(
-        sessions_.begin(), sessions_.end(), [](const auto& left, const auto& right) {
-            return std::pair(!left->port.expired(), left->used) <
-                   std::pair(!right->port.expired(), right->used);
-        });
+    const auto oldest = std::min_element(sessions_.begin(), sessions_.end(),
+                                         [](const auto& left, const auto& right) {
+                                             return std::pair(!left->port.expired(), left->used) <
+                                                    std::pair(!right->port.expired(), right->used);
+                                         });
     (*oldest)->gone.request();
     sessions_.erase(oldest);
     wake_waits();
@@ -213,9 +213,12 @@ Task<void> Board::carry_out(std::shared_ptr<Running> running) {
 boost::asio::awaitable<Outcome> Board::carry_out_step(std::shared_ptr<Running> running,
                                                       WireStep step) {
     switch (step.verb) {
-        case Verb::read: co_return read_step(step, *running);
-        case Verb::write_and_check: co_return check_step(step, *running);
-        case Verb::wait: co_return co_await wait_until(running, step);
+        case Verb::read:
+            co_return read_step(step, *running);
+        case Verb::write_and_check:
+            co_return check_step(step, *running);
+        case Verb::wait:
+            co_return co_await wait_until(running, step);
         case Verb::write: {
             const Outcome outcome = chip_.registers().write(step.address, step.mask, step.value);
             wake_waits();
@@ -253,8 +256,7 @@ Outcome Board::check_step(const WireStep& step, Running& running) {
     return value == step.value ? Outcome::done : Outcome::check_failed;
 }
 
-boost::asio::awaitable<Outcome> Board::wait_until(std::shared_ptr<Running> running,
-                                                  WireStep step) {
+boost::asio::awaitable<Outcome> Board::wait_until(std::shared_ptr<Running> running, WireStep step) {
     RegisterFile& registers = chip_.registers();
     const std::uint32_t all = registers.all_bits(step.address);
     if (((step.value | step.mask.value_or(0)) & ~all) != 0 && all != 0) {

@@ -59,8 +59,7 @@ class Board {
     std::shared_ptr<Session> session_of(const Port& port) const;
 
     Task<void> carry_out(std::shared_ptr<Running> running);
-    boost::asio::awaitable<Outcome> carry_out_step(std::shared_ptr<Running> running,
-                                                   WireStep step);
+    boost::asio::awaitable<Outcome> carry_out_step(std::shared_ptr<Running> running, WireStep step);
     boost::asio::awaitable<Outcome> wait_until(std::shared_ptr<Running> running, WireStep step);
     Outcome read_step(const WireStep& step, Running& running);
     Outcome check_step(const WireStep& step, Running& running);

@@ -116,7 +116,8 @@ std::uint32_t read_limit(const Object& from, std::string_view key, std::uint32_t
 
 WireOptions read_wire(const Object& from) {
     WireOptions wire;
-    wire.latency_us = from.number_or("latency_us", wire.latency_us, {.at_least = 0, .at_most = 1e7});
+    wire.latency_us =
+        from.number_or("latency_us", wire.latency_us, {.at_least = 0, .at_most = 1e7});
     wire.baud = read_limit(from, "baud", wire.baud, 0, 100'000'000);
     wire.lock_us = from.number_or("lock_us", wire.lock_us, {.at_least = 0, .at_most = 1e7});
     wire.default_dwell_s =
@@ -152,7 +153,8 @@ std::uint64_t read_frame_number(const Object& from, std::string_view key) {
 
 void read_reset(const Object& from, FaultOptions& faults) {
     for (const Node node : from.list("at_batches")) {
-        faults.reset_at_batches.push_back(static_cast<std::uint64_t>(node.integer({.at_least = 1})));
+        faults.reset_at_batches.push_back(
+            static_cast<std::uint64_t>(node.integer({.at_least = 1})));
     }
     faults.reset_before_batch = from.word_or("when", 0, {"in_batch", "before_batch"}) == 1;
     from.finish();
@@ -179,8 +181,7 @@ FaultOptions read_faults(const Object& from, const RegisterMapDescription& map) 
     }
     if (const auto console = from.object_if("console")) {
         faults.console_text = console->text("text");
-        faults.console_probability =
-            console->number("probability", {.at_least = 0, .at_most = 1});
+        faults.console_probability = console->number("probability", {.at_least = 0, .at_most = 1});
         console->finish();
     }
     from.finish();

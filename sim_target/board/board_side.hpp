@@ -20,16 +20,16 @@ namespace lanewright::sim {
 
 // The part that a field plays in the chip; all but `fixed` are fields of a lane.
 enum class Part : std::uint8_t {
-    r1,              // bank codes, in the order of all codes here
+    r1,  // bank codes, in the order of all codes here
     c1,
     r2,
     c2,
-    strobe,          // a written one makes the written codes take effect; absent: at once
-    trigger,         // a written one starts the monitor
-    busy,            // the monitor is at work, for this lane or one that shares it
-    closed,          // the last reading found no opening
-    lock,            // the receiver has lock
-    up,              // latched edges, in steps
+    strobe,   // a written one makes the written codes take effect; absent: at once
+    trigger,  // a written one starts the monitor
+    busy,     // the monitor is at work, for this lane or one that shares it
+    closed,   // the last reading found no opening
+    lock,     // the receiver has lock
+    up,       // latched edges, in steps
     down,
     left,
     right,
@@ -53,9 +53,9 @@ struct Binding {
 };
 
 struct WireOptions {
-    double latency_us = 0;       // from the end of a request to the first byte of its answer
-    std::uint32_t baud = 921600;  // of pseudo-terminals, 10 bits a byte; 0: not limited
-    double lock_us = 300;        // from new codes to lock
+    double latency_us = 0;          // from the end of a request to the first byte of its answer
+    std::uint32_t baud = 921600;    // of pseudo-terminals, 10 bits a byte; 0: not limited
+    double lock_us = 300;           // from new codes to lock
     double default_dwell_s = 1e-3;  // where no field states the dwell
     BoardLimits limits;
 };

@@ -82,14 +82,22 @@ std::uint32_t Chip::status(std::uint16_t number, Part part) {
     finish_due();
     const Lane& lane = lanes_[number];
     switch (part) {
-        case Part::busy: return busy_until_[lane.group] > time_.now() ? 1 : 0;
-        case Part::closed: return lane.edges.closed ? 1 : 0;
-        case Part::lock: return has_lock(lane) ? 1 : 0;
-        case Part::up: return static_cast<std::uint32_t>(lane.edges.up);
-        case Part::down: return static_cast<std::uint32_t>(lane.edges.down);
-        case Part::left: return static_cast<std::uint32_t>(lane.edges.left);
-        case Part::right: return static_cast<std::uint32_t>(lane.edges.right);
-        default: return 0;
+        case Part::busy:
+            return busy_until_[lane.group] > time_.now() ? 1 : 0;
+        case Part::closed:
+            return lane.edges.closed ? 1 : 0;
+        case Part::lock:
+            return has_lock(lane) ? 1 : 0;
+        case Part::up:
+            return static_cast<std::uint32_t>(lane.edges.up);
+        case Part::down:
+            return static_cast<std::uint32_t>(lane.edges.down);
+        case Part::left:
+            return static_cast<std::uint32_t>(lane.edges.left);
+        case Part::right:
+            return static_cast<std::uint32_t>(lane.edges.right);
+        default:
+            return 0;
     }
 }
 

@@ -83,7 +83,8 @@ std::optional<Octets> payload_of(std::span<const std::uint8_t> line_bytes) {
 }
 
 FrameSplitter::FrameSplitter(std::size_t largest_payload)
-    : most_(largest_payload + checksum_size + 1 + (largest_payload + checksum_size) / longest_run) {}
+    : most_(largest_payload + checksum_size + 1 + (largest_payload + checksum_size) / longest_run) {
+}
 
 std::vector<Octets> FrameSplitter::take(std::span<const std::uint8_t> received) {
     std::vector<Octets> frames;

@@ -9,7 +9,9 @@ constexpr std::uint32_t result_size = 5;
 
 enum class Addressing : unsigned { same = 0, next = 1, delta = 2, malformed = 3 };
 
-std::uint32_t unzigzag(std::uint32_t coded) { return (coded >> 1) ^ (0u - (coded & 1u)); }
+std::uint32_t unzigzag(std::uint32_t coded) {
+    return (coded >> 1) ^ (0u - (coded & 1u));
+}
 
 // Reads one operation; `address` is the one before and becomes this one's.
 std::optional<WireStep> decode_step(Reader& reader, std::uint32_t& address) {
@@ -109,7 +111,8 @@ BatchError decode_steps(std::span<const std::uint8_t> operations, const BoardLim
         beyond = beyond || step->time_us > limits.longest_wait_us;
         steps.push_back(*step);
     }
-    beyond = beyond || steps.size() > limits.most_operations || longest_reply > limits.largest_payload;
+    beyond =
+        beyond || steps.size() > limits.most_operations || longest_reply > limits.largest_payload;
     return beyond ? BatchError::beyond_limit : BatchError::none;
 }
 

@@ -1,13 +1,13 @@
+#include <fcntl.h>
+#include <termios.h>
+#include <unistd.h>
 #include <boost/asio/as_tuple.hpp>
 #include <boost/asio/posix/stream_descriptor.hpp>
 #include <boost/asio/use_awaitable.hpp>
 #include <cerrno>
 #include <cstdlib>
 #include <cstring>
-#include <fcntl.h>
 #include <filesystem>
-#include <termios.h>
-#include <unistd.h>
 
 #include "sim_target/board/servers.hpp"
 

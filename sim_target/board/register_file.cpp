@@ -14,12 +14,16 @@ bool is_status(Part part) {
         case Part::up:
         case Part::down:
         case Part::left:
-        case Part::right: return true;
-        default: return false;
+        case Part::right:
+            return true;
+        default:
+            return false;
     }
 }
 
-bool is_code(Part part) { return part <= Part::c2; }
+bool is_code(Part part) {
+    return part <= Part::c2;
+}
 
 }  // namespace
 
@@ -114,8 +118,7 @@ Outcome RegisterFile::write(std::uint32_t address, std::optional<std::uint32_t> 
     bool codes = false;
     for (const Field& field : reg.fields) {
         const std::uint32_t bits = field.mask & written;
-        const bool keeps =
-            field.access == Access::read_write || field.access == Access::write_only;
+        const bool keeps = field.access == Access::read_write || field.access == Access::write_only;
         if (bits == 0 || !keeps) continue;
         reg.value = (reg.value & ~bits) | (value & bits);
         codes = codes || is_code(field.part);

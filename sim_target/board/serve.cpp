@@ -69,9 +69,8 @@ Loaded load(const std::string& path) {
 
 bool print_ready(const std::vector<std::unique_ptr<Server>>& tcp,
                  const std::vector<std::unique_ptr<Server>>& pty) {
-    nlohmann::ordered_json ready = {{"ready", true},
-                                    {"tcp", nlohmann::json::array()},
-                                    {"pty", nlohmann::json::array()}};
+    nlohmann::ordered_json ready = {
+        {"ready", true}, {"tcp", nlohmann::json::array()}, {"pty", nlohmann::json::array()}};
     for (const auto& server : tcp) ready["tcp"].push_back(server->address());
     for (const auto& server : pty) ready["pty"].push_back(server->address());
     std::cout << ready.dump(-1, ' ', false, nlohmann::json::error_handler_t::replace) << std::endl;

@@ -25,8 +25,8 @@ class TcpEnd final : public WireEnd {
 
   private:
     asio::awaitable<std::size_t> read_bytes(std::span<std::uint8_t> buffer) override {
-        const auto [failed, size] = co_await socket_.async_read_some(
-            asio::buffer(buffer.data(), buffer.size()), use_tuple);
+        const auto [failed, size] =
+            co_await socket_.async_read_some(asio::buffer(buffer.data(), buffer.size()), use_tuple);
         co_return failed ? 0 : size;
     }
 

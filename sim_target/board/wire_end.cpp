@@ -49,8 +49,7 @@ Task<void> WireEnd::run(std::shared_ptr<WireEnd> self) {
         const std::size_t size = co_await self->read_bytes(buffer);
         if (size == 0) break;
         if (self->byte_s_ > 0) {
-            self->line_free_ =
-                std::max(self->line_free_, hub.time.now()) + self->on_the_line(size);
+            self->line_free_ = std::max(self->line_free_, hub.time.now()) + self->on_the_line(size);
             const Woke woke = co_await hub.time.sleep_until(self->line_free_, self->stop_);
             if (woke == Woke::stopped) break;
         }

@@ -32,7 +32,7 @@ struct Hub {
     WireFaults faults;
     double time_scale;
     TaskGroup tasks;
-    std::uint64_t frames = 0;  // received by any wire since the start
+    std::uint64_t frames = 0;                // received by any wire since the start
     std::vector<std::function<void()>> cut;  // one a server: its wires are gone
 
     void drop_all_wires();
@@ -53,7 +53,8 @@ class WireEnd : public Port, public std::enable_shared_from_this<WireEnd> {
     void close();
 
   protected:
-    virtual boost::asio::awaitable<std::size_t> read_bytes(std::span<std::uint8_t> buffer) = 0;  // 0: gone
+    virtual boost::asio::awaitable<std::size_t> read_bytes(
+        std::span<std::uint8_t> buffer) = 0;                             // 0: gone
     virtual boost::asio::awaitable<bool> write_bytes(Octets bytes) = 0;  // false: gone
     virtual void shut() = 0;  // ends a read or write that is going on
     Hub& hub() { return hub_; }

@@ -1,7 +1,10 @@
 // Register transactions a second against the simulated board in a process of its own, over TCP
 // and over a pseudo-terminal at 921,600 baud, beside what the line itself allows.
 
+#include <algorithm>
 #include <iostream>
+#include <stdexcept>
+#include <vector>
 
 #include "drivers/board/board.hpp"
 #include "drivers/board/make_link.hpp"
@@ -59,7 +62,7 @@ struct Measured {
     double sent_bytes = 0, received_bytes = 0;  // a transaction
 };
 
-Measured measure(const std::string& address, unsigned at_once, unsigned count) {
+Measured measure_once(const std::string& address, unsigned at_once, unsigned count) {
     boost::asio::io_context io;
     SteadyTimeSource time(io);
     Traffic traffic;
@@ -67,14 +70,30 @@ Measured measure(const std::string& address, unsigned at_once, unsigned count) {
     auto link = std::make_unique<CountingLink>(make_link(time, file.link), traffic);
     auto board = run_until_done(time, open_board(file, std::move(link), time)).value();
     const Traffic before = traffic;
+    const std::uint64_t frames_before = board->statistics().frames;
     const TimePoint start = time.now();
     TaskGroup group(io);
     for (unsigned i = 0; i < at_once; ++i) group.spawn("asker", transact(*board, count / at_once));
     run_until_done(time, group.join()).value();
     const double took_s = std::chrono::duration<double>(time.now() - start).count();
+    // A rate counts only if every transaction was a question and an answer on the wire.
+    const std::uint64_t frames = board->statistics().frames - frames_before;
     run_until_done(time, board->close()).value();
+    if (frames != 2 * std::uint64_t{count}) {
+        throw std::runtime_error(std::to_string(frames) + " frames for " + std::to_string(count) +
+                                 " transactions");
+    }
     return {count / took_s, static_cast<double>(traffic.sent - before.sent) / count,
             static_cast<double>(traffic.received - before.received) / count};
+}
+
+// The middle one of five: a round trip of some microseconds depends much on what else runs.
+Measured measure(const std::string& address, unsigned at_once, unsigned count) {
+    std::vector<Measured> all;
+    for (int i = 0; i < 5; ++i) all.push_back(measure_once(address, at_once, count));
+    std::sort(all.begin(), all.end(),
+              [](const Measured& one, const Measured& other) { return one.per_s < other.per_s; });
+    return all[all.size() / 2];
 }
 
 constexpr double bytes_per_s = 921600 / 10.0;  // start bit, eight, stop bit

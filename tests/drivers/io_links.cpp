@@ -87,7 +87,8 @@ TEST_CASE("A memory link carries bytes both ways, late by its latency and its ra
     Pair bench({.latency = 3ms, .bytes_per_s = 1000});
     const TimePoint start = bench.time.now();
     REQUIRE(run_until_done(bench.time,
-                           open_and_send(bench.time, *bench.pair.host, bytes_of("0123456789"))).has_value());
+                           open_and_send(bench.time, *bench.pair.host, bytes_of("0123456789")))
+                .has_value());
     const auto got = run_until_done(bench.time, read_exactly(*bench.pair.board, 10));
     CHECK(text_of(*got) == "0123456789");
     CHECK(bench.time.now() - start == 13ms);
@@ -97,7 +98,8 @@ TEST_CASE("A memory link carries bytes both ways, late by its latency and its ra
 
 TEST_CASE("A cut memory cable loses the link for a pending read, and open joins it anew") {
     Pair bench;
-    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, Bytes{})).has_value());
+    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, Bytes{}))
+                .has_value());
     const Alarm alarm(bench.time, bench.time.now() + 1s, [&] { bench.pair.cable->unplug(); });
     const auto lost = run_until_done(bench.time, read_exactly(*bench.pair.host, 1));
     REQUIRE(lost.has_error());
@@ -105,7 +107,8 @@ TEST_CASE("A cut memory cable loses the link for a pending read, and open joins 
     CHECK_FALSE(bench.pair.host->is_open());
     CHECK(run_until_done(bench.time, bench.pair.host->open(bench.time.now() + 1s)).has_error());
     bench.pair.cable->plug_in();
-    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, bytes_of("x"))).has_value());
+    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, bytes_of("x")))
+                .has_value());
     CHECK(text_of(*run_until_done(bench.time, read_exactly(*bench.pair.board, 1))) == "x");
 }
 
@@ -115,7 +118,8 @@ TEST_CASE("A memory cable's hook may alter, double and delay what is written") {
         bytes.push_back(std::byte{'!'});
         return std::vector<MemoryPiece>{{bytes, 5ms}, {bytes, 2ms}, {bytes_of("a"), 0ms}};
     });
-    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, bytes_of("b"))).has_value());
+    REQUIRE(run_until_done(bench.time, open_and_send(bench.time, *bench.pair.host, bytes_of("b")))
+                .has_value());
     CHECK(text_of(*run_until_done(bench.time, read_exactly(*bench.pair.board, 5))) == "ab!b!");
 }
 

@@ -1,14 +1,14 @@
 #include <asm/termbits.h>
-#include <catch2/catch.hpp>
-#include <csignal>
-#include <cstdlib>
 #include <fcntl.h>
-#include <filesystem>
-#include <fstream>
 #include <sys/file.h>
 #include <sys/ioctl.h>
 #include <sys/wait.h>
 #include <unistd.h>
+#include <catch2/catch.hpp>
+#include <csignal>
+#include <cstdlib>
+#include <filesystem>
+#include <fstream>
 
 #include "drivers/io/port_holder.hpp"
 #include "drivers/io/serial_link.hpp"
@@ -233,8 +233,8 @@ TEST_CASE("What cannot be opened or is no serial port is refused with a reason")
 TEST_CASE("A slow adapter's latency timer is set, or a warning gives the exact udev rule") {
     Terminal terminal;
     const int fd = ::open(terminal.path.c_str(), O_RDWR | O_NOCTTY | O_NONBLOCK | O_CLOEXEC);
-    const auto sysfs = std::filesystem::temp_directory_path() /
-                       ("lanewright-sysfs-" + std::to_string(::getpid()));
+    const auto sysfs =
+        std::filesystem::temp_directory_path() / ("lanewright-sysfs-" + std::to_string(::getpid()));
     const auto knob = sysfs / "bus/usb-serial/devices/ttyUSB7/latency_timer";
     std::filesystem::create_directories(knob.parent_path());
     CHECK(ask_for_low_latency(fd, "ttyUSB7", sysfs).empty());

@@ -146,8 +146,8 @@ TEST_CASE("A signal raised from another thread wakes the steady clock's wait") {
         std::this_thread::sleep_for(5ms);
         poster();
     });
-    const auto woke = run_until_done(
-        time, [](TimeSource& source, Signal& its_signal) -> Task<Woke> {
+    const auto woke =
+        run_until_done(time, [](TimeSource& source, Signal& its_signal) -> Task<Woke> {
             co_return co_await source.wait(its_signal, source.now() + 20s);
         }(time, signal));
     CHECK(*woke == Woke::signalled);

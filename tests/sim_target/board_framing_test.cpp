@@ -16,11 +16,14 @@ Octets octets(const std::string& hex) {
     return out;
 }
 
-Octets repeated(std::uint8_t value, std::size_t count) { return Octets(count, value); }
+Octets repeated(std::uint8_t value, std::size_t count) {
+    return Octets(count, value);
+}
 
 Octets counting(unsigned from, unsigned to) {
     Octets out;
-    for (unsigned value = from; value <= to; ++value) out.push_back(static_cast<std::uint8_t>(value));
+    for (unsigned value = from; value <= to; ++value)
+        out.push_back(static_cast<std::uint8_t>(value));
     return out;
 }
 
@@ -64,7 +67,8 @@ TEST_CASE("Random payloads survive the line, and a flipped bit never does") {
     std::mt19937 random(11);
     for (int round = 0; round < 2000; ++round) {
         Octets payload(1 + random() % 700);
-        for (auto& byte : payload) byte = static_cast<std::uint8_t>(random() % 3 == 0 ? 0 : random());
+        for (auto& byte : payload)
+            byte = static_cast<std::uint8_t>(random() % 3 == 0 ? 0 : random());
         Octets line = line_bytes_of(payload);
         REQUIRE(line.back() == 0);
         line.pop_back();
@@ -77,8 +81,7 @@ TEST_CASE("Random payloads survive the line, and a flipped bit never does") {
 TEST_CASE("A splitter finds frames in any pieces, and drops what is too long") {
     FrameSplitter splitter(64);
     CHECK(splitter.take(octets("00 00 11 22")).empty());
-    CHECK(splitter.take(octets("33 00 44 00 00")) ==
-          std::vector{octets("11 22 33"), octets("44")});
+    CHECK(splitter.take(octets("33 00 44 00 00")) == std::vector{octets("11 22 33"), octets("44")});
     CHECK(splitter.take(repeated(7, 5000)).empty());
     CHECK(splitter.take(octets("00 55 00")) == std::vector<Octets>{octets("55")});
     CHECK(splitter.too_long() == 1);
@@ -101,7 +104,8 @@ TEST_CASE("A hello and its answer are those of the protocol page's example") {
 TEST_CASE("A batch and its reply are those of the protocol page's example") {
     // drivers/framed.md, section 7.
     const Octets payload = octets(
-        "02 03 02 01 4A 3B AC 02 32 8A 04 01 01 32 09 1F 09 31 08 01 01 04 C8 01 33 04 01 01 88 27");
+        "02 03 02 01 4A 3B AC 02 32 8A 04 01 01 32 09 1F 09 31 08 01 01 04 C8 01 33 04 01 01 88 "
+        "27");
     std::span<const std::uint8_t> operations;
     const auto head = decode_head(payload, operations);
     REQUIRE(head);
@@ -127,14 +131,14 @@ TEST_CASE("A batch and its reply are those of the protocol page's example") {
 TEST_CASE("Malformed batches and batches beyond a limit are told apart") {
     std::vector<WireStep> steps;
     CHECK(steps_of("10 08", steps) == BatchError::none);
-    CHECK(steps_of("05", steps) == BatchError::malformed);           // no such operation
-    CHECK(steps_of("40", steps) == BatchError::malformed);           // high bits
-    CHECK(steps_of("18", steps) == BatchError::malformed);           // no such addressing
-    CHECK(steps_of("20 01", steps) == BatchError::malformed);        // a read with a mask
-    CHECK(steps_of("21 00 00", steps) == BatchError::malformed);     // an empty mask
-    CHECK(steps_of("21 01 02", steps) == BatchError::malformed);     // value outside the mask
-    CHECK(steps_of("0C 01", steps) == BatchError::malformed);        // a pause with an address
-    CHECK(steps_of("01", steps) == BatchError::malformed);           // ends too soon
+    CHECK(steps_of("05", steps) == BatchError::malformed);        // no such operation
+    CHECK(steps_of("40", steps) == BatchError::malformed);        // high bits
+    CHECK(steps_of("18", steps) == BatchError::malformed);        // no such addressing
+    CHECK(steps_of("20 01", steps) == BatchError::malformed);     // a read with a mask
+    CHECK(steps_of("21 00 00", steps) == BatchError::malformed);  // an empty mask
+    CHECK(steps_of("21 01 02", steps) == BatchError::malformed);  // value outside the mask
+    CHECK(steps_of("0C 01", steps) == BatchError::malformed);     // a pause with an address
+    CHECK(steps_of("01", steps) == BatchError::malformed);        // ends too soon
     CHECK(steps_of("01 FF FF FF FF 1F", steps) == BatchError::malformed);  // beyond 32 bits
     CHECK(steps_of("04 64", steps, {.longest_wait_us = 100}) == BatchError::none);
     CHECK(steps_of("04 65", steps, {.longest_wait_us = 100}) == BatchError::beyond_limit);

@@ -1,12 +1,12 @@
 #include "tests/wire/target_process.hpp"
 
+#include <poll.h>
+#include <sys/wait.h>
+#include <unistd.h>
 #include <csignal>
 #include <cstdlib>
 #include <fstream>
-#include <poll.h>
 #include <stdexcept>
-#include <sys/wait.h>
-#include <unistd.h>
 
 namespace lanewright::tests {
 

@@ -3,10 +3,10 @@
 // Ownership: the process, its link and its files end with the object.
 // Threads:   one.
 
+#include <sys/types.h>
 #include <filesystem>
 #include <nlohmann/json.hpp>
 #include <string>
-#include <sys/types.h>
 
 #include "drivers/config/board_file.hpp"
 

@@ -14,8 +14,12 @@ bool is_void(const Fault& fault) {
 
 }  // namespace
 
-Guard::Guard(unsigned seconds) { ::alarm(seconds); }
-Guard::~Guard() { ::alarm(0); }
+Guard::Guard(unsigned seconds) {
+    ::alarm(seconds);
+}
+Guard::~Guard() {
+    ::alarm(0);
+}
 
 WireBench::WireBench(BoardFile file, unsigned most_seconds)
     : guard_(most_seconds), file_(std::move(file)) {}

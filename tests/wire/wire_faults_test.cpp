@@ -1,9 +1,9 @@
-#include <csignal>
 #include <fcntl.h>
-#include <map>
 #include <sys/file.h>
 #include <sys/wait.h>
 #include <unistd.h>
+#include <csignal>
+#include <map>
 
 #include "drivers/io/task_group.hpp"
 #include "sim_target/physics/truth.hpp"
@@ -128,13 +128,12 @@ TEST_CASE("Two thousand transactions over a bad wire with resets accept no wrong
     constexpr std::uint32_t count_of_lane = 125;  // half are two batches or more
     const bool serial = GENERATE(false, true);
     const Wire expected = undisturbed(count_of_lane);
-    TargetProcess process(with_faults(
-        {{"seed", 7},
-         {"flip", {{"probability", 0.01}}},
-         {"cut", {{"probability", 0.01}}},
-         {"twice", {{"probability", 0.01}}},
-         {"late", {{"probability", 0.01}, {"by_ms", 120}}},
-         {"reset", {{"at_batches", {301, 777}}}}}));
+    TargetProcess process(with_faults({{"seed", 7},
+                                       {"flip", {{"probability", 0.01}}},
+                                       {"cut", {{"probability", 0.01}}},
+                                       {"twice", {{"probability", 0.01}}},
+                                       {"late", {{"probability", 0.01}, {"by_ms", 120}}},
+                                       {"reset", {{"at_batches", {301, 777}}}}}));
     WireBench bench(demo_board(serial ? process.serial() : process.tcp(), 60), 100);
     const auto opened = bench.open();
     INFO((opened.has_error() ? opened.error().text() : std::string()));
@@ -187,8 +186,7 @@ TEST_CASE("A board that answers garbage is given up") {
 }
 
 TEST_CASE("Another board on the right port is refused with both identities") {
-    const Fault fault =
-        failure_to_open(with_faults({{"wrong_identity", {{"REVISION.major", 3}}}}));
+    const Fault fault = failure_to_open(with_faults({{"wrong_identity", {{"REVISION.major", 3}}}}));
     INFO(fault.text());
     CHECK(fault.cause == Cause::wrong_board);
     CHECK(fault.text().find("major") != std::string::npos);
@@ -209,8 +207,7 @@ TEST_CASE("A port held by another process is refused with its pid") {
 
 TEST_CASE("A cable that goes and comes back costs no wrong value") {
     const bool serial = GENERATE(false, true);
-    TargetProcess process(
-        with_faults({{"drop", {{"at_frame", 60}, {"back_after_ms", 300}}}}));
+    TargetProcess process(with_faults({{"drop", {{"at_frame", 60}, {"back_after_ms", 300}}}}));
     WireBench bench(demo_board(serial ? process.serial() : process.tcp()));
     REQUIRE(bench.open().has_value());
     const Wire expected = undisturbed(20);
@@ -226,8 +223,7 @@ TEST_CASE("A cable that goes and comes back costs no wrong value") {
 }
 
 TEST_CASE("A cable that stays away ends the run within its patience") {
-    TargetProcess process(
-        with_faults({{"drop", {{"at_frame", 40}, {"back_after_ms", 60'000}}}}));
+    TargetProcess process(with_faults({{"drop", {{"at_frame", 40}, {"back_after_ms", 60'000}}}}));
     BoardFile file = demo_board(process.tcp());
     file.dialect.patience_s = 1;
     WireBench bench(file);

@@ -84,7 +84,8 @@ TEST_CASE("Readings are equal over TCP and serial for equal ordinals, and are th
     const auto tcp = readings_over(demo_target(), false);
     const auto serial = readings_over(demo_target(), true);
     Complaints complaints;
-    const auto target = sim::load_target(LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json", complaints);
+    const auto target =
+        sim::load_target(LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json", complaints);
     REQUIRE(target);
     int open = 0;
     for (std::uint16_t lane = 0; lane < lane_count; ++lane) {
@@ -95,9 +96,8 @@ TEST_CASE("Readings are equal over TCP and serial for equal ordinals, and are th
             const Reading& reading = tcp[lane][i].reading;
             CHECK(reading.codes == some_codes()[i]);
             const std::vector<std::int32_t> code = some_codes()[i].value;
-            const auto latched =
-                sim::latched_reading(oracle, {code[0], code[2], code[1], code[3]}, 1e-6, 1u << 22,
-                                     target->seed, lane, i + 1);
+            const auto latched = sim::latched_reading(oracle, {code[0], code[2], code[1], code[3]},
+                                                      1e-6, 1u << 22, target->seed, lane, i + 1);
             CHECK((reading.status == Status::open || reading.status == Status::saturated) ==
                   !latched.closed);
             if (reading.status != Status::open) continue;
