@@ -23,23 +23,23 @@ std::optional<Codes> pattern_codes(const CodeSpace& space, const Codes& before, 
 
 class Descent {
   public:
-    Descent(const CodeSpace& space, const Moves& moves, const Ledger& ledger, Codes start)
-        : space_(space), moves_(moves), ledger_(ledger), here_(std::move(start)) {}
+    Descent(const CodeSpace& space, const Moves& moves, const Moves& oblique, const Ledger& ledger,
+            Codes start)
+        : space_(space),
+          moves_(moves),
+          oblique_(oblique),
+          ledger_(ledger),
+          here_(std::move(start)) {}
 
     Question run() {
         std::size_t level = 0;
-        while (level < moves_.levels()) {
+        for (;;) {
+            if (!descend_from(level)) return question_;
             const Codes before = here_;
-            for (std::size_t axis = 0; axis < moves_.axes(); ++axis) {
-                if (!try_axis(axis, level)) return question_;
-            }
-            if (here_ == before) {
-                ++level;
-            } else if (!try_pattern(before)) {
-                return question_;
-            }
+            if (!try_oblique()) return question_;
+            if (here_ == before) return {};
+            level = moves_.levels() - 1;
         }
-        return {};
     }
 
   private:
@@ -49,18 +49,47 @@ class Descent {
         return there != nullptr && (now == nullptr || there->first > now->first);
     }
 
+    // All of these return false where a reading is missing.
+
+    bool descend_from(std::size_t level) {
+        while (level < moves_.levels()) {
+            const Codes before = here_;
+            for (std::size_t axis = 0; axis < moves_.axes(); ++axis) {
+                if (!try_axis(moves_, axis, level)) return false;
+            }
+            if (here_ == before) {
+                ++level;
+            } else if (!try_pattern(before)) {
+                return false;
+            }
+        }
+        return true;
+    }
+
+    // Until one of them leads on. The last axis comes first: it is the impedance level, along
+    // which a ridge runs where only the response counts.
+    bool try_oblique() {
+        const Codes before = here_;
+        for (std::size_t level = 1; level < oblique_.levels(); ++level) {
+            for (std::size_t axis = oblique_.axes(); axis-- > 0;) {
+                if (!try_axis(oblique_, axis, level)) return false;
+                if (here_ != before) return true;
+            }
+        }
+        return true;
+    }
+
     // Both neighbours are asked for at once, so that a board can take them back to back.
-    // False: a reading is missing.
-    bool try_axis(std::size_t axis, std::size_t level) {
+    bool try_axis(const Moves& moves, std::size_t axis, std::size_t level) {
         std::vector<Codes> neighbours;
         for (const int direction : {+1, -1}) {
-            auto codes = moves_.step(here_, axis, direction, level);
+            auto codes = moves.step(here_, axis, direction, level);
             if (codes &&
                 std::find(neighbours.begin(), neighbours.end(), *codes) == neighbours.end()) {
                 neighbours.push_back(std::move(*codes));
             }
         }
-        if (missing(neighbours, "step along " + moves_.axis_name(axis))) return false;
+        if (missing(neighbours, "step along " + moves.axis_name(axis))) return false;
         for (const auto& codes : neighbours) {
             if (better(codes)) here_ = codes;
         }
@@ -86,6 +115,7 @@ class Descent {
 
     const CodeSpace& space_;
     const Moves& moves_;
+    const Moves& oblique_;
     const Ledger& ledger_;
     Codes here_;
     Question question_;
@@ -94,14 +124,16 @@ class Descent {
 class DescentSearch : public StagedSearch {
   public:
     DescentSearch(const LaneProblem& problem, bool along_response) : StagedSearch(problem) {
-        if (along_response) moves_ = make_response_moves(space());
-        fell_back_ = along_response && !moves_;
-        if (!moves_) moves_ = make_code_moves(space());
+        moves_ = make_code_moves(space());
+        oblique_ = make_response_moves(space());
+        fell_back_ = along_response && !oblique_;
+        if (along_response && oblique_) std::swap(moves_, oblique_);
+        if (!oblique_) oblique_ = make_pair_moves(space());
     }
 
   protected:
     Question search(const Codes& start) const override {
-        return descend(space(), *moves_, ledger(), start);
+        return descend(space(), *moves_, *oblique_, ledger(), start);
     }
 
     std::vector<std::string> search_notes() const override {
@@ -112,14 +144,15 @@ class DescentSearch : public StagedSearch {
     }
 
   private:
-    std::unique_ptr<Moves> moves_;
+    std::unique_ptr<Moves> moves_, oblique_;
     bool fell_back_ = false;
 };
 
 }  // namespace
 
-Question descend(const CodeSpace& space, const Moves& moves, const Ledger& ledger, Codes start) {
-    return Descent(space, moves, ledger, std::move(start)).run();
+Question descend(const CodeSpace& space, const Moves& moves, const Moves& oblique,
+                 const Ledger& ledger, Codes start) {
+    return Descent(space, moves, oblique, ledger, std::move(start)).run();
 }
 
 std::unique_ptr<Procedure> make_descent(const LaneProblem& problem, std::span<const Lesson>,

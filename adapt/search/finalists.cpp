@@ -11,7 +11,7 @@ namespace lanewright {
 namespace {
 
 constexpr std::size_t most_rounds = 3;
-constexpr std::size_t best_kept = 3;
+constexpr std::size_t most_seats = 4;  // three and the present codes, or four
 constexpr std::size_t most_share = 12;
 constexpr double significant_z = 1.645;  // one-sided 5 % of the normal distribution
 
@@ -32,7 +32,7 @@ std::vector<Codes> finalists(const LaneProblem& problem, const Ledger& ledger, s
     const bool rival = problem.allow_unchanged && opens(ledger, problem.present) &&
                        problem.space->allows(problem.present);
     // One round of everybody must fit: the present codes first, as they are what is compared with.
-    const std::size_t seats = std::min(share, best_kept + (rival ? 1 : 0));
+    const std::size_t seats = std::min(share, most_seats);
     const auto present = std::find(chosen.begin(), chosen.end(), problem.present);
     if (rival && present != chosen.end()) {
         const auto place = static_cast<std::size_t>(present - chosen.begin());
@@ -81,16 +81,33 @@ double advantage(const Standing& better, const Standing& other) {
     return difference / error;
 }
 
-std::string described(const LaneProblem& problem, const Standing& standing) {
-    std::string text = text_of(*problem.space, standing.codes) + " ";
-    if (standing.score.status == Status::no_lock) return text + "(no lock)";
-    text += "at a score of ";
-    if (standing.score.bound == Bound::at_least) text += "at least ";
-    text += fixed(standing.score.value, 3) + " (95 % " + fixed(standing.score.low, 3) + " to " +
-            fixed(standing.score.high, 3) + ", ";
-    return text + (standing.again
-                       ? "mean of " + std::to_string(standing.readings) + " repeated readings)"
-                       : std::string("a single reading)"));
+std::string range_of(const Score& score) {
+    const std::string high = fixed(score.high, 2);
+    if (!std::isfinite(score.high)) return "above " + fixed(score.low, 2);
+    if (!std::isfinite(score.low)) return "below " + high;
+    return fixed(score.low, 2) + " to " + high;
+}
+
+// "3.33 (3.25 to 3.44)", "closed", "no lock"
+std::string described(const Standing& standing) {
+    const Score& score = standing.score;
+    if (score.status == Status::no_lock) return "no lock";
+    if (score.bound == Bound::at_most) return "closed";
+    if (!std::isfinite(score.value)) return "unknown";
+    const std::string bound = score.bound == Bound::at_least ? "at least " : "";
+    return bound + fixed(score.value, 2) + " (" + range_of(score) + ")";
+}
+
+std::string readings_of(const Standing& standing) {
+    const std::string count = std::to_string(standing.readings);
+    return count + (standing.readings == 1 ? " reading" : " readings");
+}
+
+// "score 3.33 (3.25 to 3.44) against 2.88 (2.79 to 2.99), 3 readings each"
+std::string compared(const Standing& one, const Standing& other) {
+    const std::string scores = "score " + described(one) + " against " + described(other) + ", ";
+    if (one.readings == other.readings) return scores + readings_of(one) + " each";
+    return scores + readings_of(one) + " against " + std::to_string(other.readings);
 }
 
 Choice keep(const LaneProblem& problem, std::string reason) {
@@ -135,32 +152,28 @@ Choice choose(const LaneProblem& problem, const Ledger& ledger) {
         standings.begin(), standings.end(), [](const Standing& a, const Standing& b) {
             return a.score.value < b.score.value;  // the first of equals: the better ranked
         });
+    const std::string alone = "score " + described(best) + ", " + readings_of(best);
     if (best.codes == problem.present) {
-        return keep(problem,
-                    "the present codes are the best that were read: " + described(problem, best));
+        return keep(problem, "the present codes are the best that were read: " + alone);
     }
     const bool rival = problem.space->allows(problem.present) && ledger.was_read(problem.present);
     if (!problem.allow_unchanged || !rival) {
-        return {best.codes, false, "best of what was read: " + described(problem, best)};
+        return {best.codes, false, "best of what was read: " + alone};
     }
     const auto present = standing_of(problem, ledger, problem.present);
     const double z = advantage(best, present);
-    const std::string both =
-        described(problem, best) + " against the present " + described(problem, present);
+    const std::string both = compared(best, present);
     if (!(z > significant_z)) {
         return keep(problem,
-                    "nothing is significantly better than the present codes (one-sided "
-                    "normal test at 5 %): best " +
-                        both);
+                    "nothing is significantly better than the present codes: best " + both);
     }
     if (present.score.status == Status::no_lock || present.score.bound == Bound::at_most) {
         return {best.codes, false, "open, where the present codes are not: " + both};
     }
     const std::string by = std::isfinite(z)
-                               ? "better by " + fixed(z, 1) +
-                                     " standard errors (one-sided normal test at 5 %: 1.645): "
-                               : std::string("better, and no spread is known: ");
-    return {best.codes, false, by + both};
+                               ? " by " + fixed(z, 1) + " standard errors: "
+                               : std::string(", and no spread is known: ");
+    return {best.codes, false, "better than the present codes" + by + both};
 }
 
 }  // namespace lanewright

@@ -17,8 +17,8 @@ namespace lanewright {
 std::size_t finalist_share(std::size_t total_readings);
 
 // What to read next of the finalists, in rounds that go through them forwards and backwards in
-// turn, so that a steady drift cancels; empty: done. At most three rounds of the three best codes
-// and the present ones; fewer of both where `share` does not hold that many.
+// turn, so that a steady drift cancels; empty: done. At most three rounds of the four best codes,
+// the present ones among them where they are open and may stay; fewer where `share` is smaller.
 std::vector<Codes> next_finalists(const LaneProblem& problem, const Ledger& ledger,
                                   std::size_t share);
 

@@ -71,6 +71,51 @@ class CodeMoves : public Moves {
     std::vector<std::size_t> axes_;
 };
 
+// ---- along pairs of raw codes
+
+class PairMoves : public Moves {
+  public:
+    explicit PairMoves(const CodeSpace& space) : space_(space), single_(space) {
+        for (const int together : {-1, +1}) {
+            for (std::size_t one = 0; one < single_.axes(); ++one) {
+                for (std::size_t other = one + 1; other < single_.axes(); ++other) {
+                    axes_.push_back({one, other, together});
+                }
+            }
+        }
+    }
+    std::size_t axes() const override { return axes_.size(); }
+    std::size_t levels() const override { return single_.levels(); }
+    std::string axis_name(std::size_t axis) const override {
+        const Axis& pair = axes_.at(axis);
+        return single_.axis_name(pair.one) + (pair.together > 0 ? " and " : " against ") +
+               single_.axis_name(pair.other);
+    }
+    // The length of each part is that of the step along its own axis.
+    std::optional<Codes> step(const Codes& from, std::size_t axis, int direction,
+                              std::size_t level) const override {
+        const Axis& pair = axes_.at(axis);
+        const auto first = single_.step(from, pair.one, direction, level);
+        const auto second = single_.step(from, pair.other, direction * pair.together, level);
+        if (!first || !second) return std::nullopt;
+        Codes codes = from;
+        for (std::size_t i = 0; i < codes.value.size(); ++i) {
+            codes.value[i] += first->value[i] - from.value[i] + second->value[i] - from.value[i];
+        }
+        if (!space_.allows(codes)) return std::nullopt;
+        return codes;
+    }
+
+  private:
+    struct Axis {
+        std::size_t one = 0, other = 0;
+        int together = +1;
+    };
+    const CodeSpace& space_;
+    CodeMoves single_;
+    std::vector<Axis> axes_;
+};
+
 // ---- along the response
 
 constexpr std::size_t response_axes = 4;
@@ -243,6 +288,10 @@ class ResponseMoves : public Moves {
 
 std::unique_ptr<Moves> make_code_moves(const CodeSpace& space) {
     return std::make_unique<CodeMoves>(space);
+}
+
+std::unique_ptr<Moves> make_pair_moves(const CodeSpace& space) {
+    return std::make_unique<PairMoves>(space);
 }
 
 std::unique_ptr<Moves> make_response_moves(const CodeSpace& space) {

@@ -33,6 +33,10 @@ class Moves {
 // Each dimension with more than one code is an axis.
 std::unique_ptr<Moves> make_code_moves(const CodeSpace& space);
 
+// Each pair of dimensions with more than one code, stepped together: both up or down, and one up
+// while the other goes down. Axes of the latter kind come first.
+std::unique_ptr<Moves> make_pair_moves(const CodeSpace& space);
+
 // Along dc attenuation, high-frequency attenuation, zero and impedance level of the equalizer, to
 // the codes nearest to the wanted response; other dimensions by their codes. Null where the space
 // lacks one of the four parts or its table.

@@ -47,8 +47,15 @@ Task<void> apply_at_hand(const BoardAtHand& at_hand, RestoreNote note, Store& st
     std::function<void(const std::string&)> say = [](const std::string& text) {
         print_error("lanewright: " + text);
     };
-    Bench bench{(*board)->lanes(), store, workers, time, stop, at_hand.endpoint.note_path(), {},
-                counts,            say};
+    Bench bench{(*board)->lanes(),
+                store,
+                workers,
+                time,
+                stop,
+                at_hand.endpoint.note_path(),
+                {},
+                counts,
+                say};
     auto identity = co_await (*board)->lanes().identify();
     if (!identity) co_return identity.error();
     if (auto mended = co_await mend_endpoint(*identity, bench, &store); !mended) {
@@ -78,9 +85,8 @@ void report_applied(const RunView& view, const RestoreNote& note, bool as_json) 
         }
     }
     for (const std::uint16_t lane : view.manifest.lanes) {
-        const bool named = std::any_of(note.lanes.begin(), note.lanes.end(), [&](const auto& l) {
-            return number(l.lane) == lane;
-        });
+        const bool named = std::any_of(note.lanes.begin(), note.lanes.end(),
+                                       [&](const auto& l) { return number(l.lane) == lane; });
         if (!named) print_error("lane " + std::to_string(lane) + ": the run has no codes for it");
     }
     if (!as_json) return;
@@ -129,10 +135,7 @@ int run_apply(const ApplyOptions& options) {
     try {
         return apply(options);
     } catch (const StoreError& error) {
-        Fault fault;
-        fault.cause = dynamic_cast<const NoSuchRun*>(&error) != nullptr ? Cause::bad_data : Cause::io;
-        fault.what = error.what();
-        return report(fault, options.json);
+        return report(error.fault(), options.json);
     }
 }
 

@@ -68,8 +68,9 @@ json field_json(const SavedField& field) {
     char address[16], mask[16];
     std::snprintf(address, sizeof address, "0x%04X", field.address);
     std::snprintf(mask, sizeof mask, "0x%X", field.mask);
-    return {{"register", field.field.reg}, {"field", field.field.field}, {"address", address},
-            {"mask", mask},                {"present", field.value},     {"lowest", field.lowest},
+    return {{"register", field.field.reg}, {"field", field.field.field},
+            {"address", address},          {"mask", mask},
+            {"present", field.value},      {"lowest", field.lowest},
             {"highest", field.highest}};
 }
 
@@ -102,6 +103,21 @@ json preview_json(const Preview& preview, const TuneRequest& request) {
             {"lanes", std::move(lanes)}};
 }
 
+// On one line where that is no wider than 80 columns, else on two.
+void print_pair(const std::string& left, const std::string& right) {
+    const bool fits = left.size() + 1 + right.size() <= 80;
+    print(left + (fits ? " " : "\n      ") + right + "\n");
+}
+
+void print_field(const SavedField& field) {
+    char left[160], right[80];
+    std::snprintf(left, sizeof left, "  %-24s 0x%04X mask 0x%-8X", field.field.text().c_str(),
+                  field.address, field.mask);
+    std::snprintf(right, sizeof right, "now %u, limits %u..%u", field.value, field.lowest,
+                  field.highest);
+    print_pair(left, right);
+}
+
 void print_preview(const Preview& preview, const TuneRequest& request) {
     char line[160];
     print("dry run: nothing was written to board " + request.board.name +
@@ -116,33 +132,30 @@ void print_preview(const Preview& preview, const TuneRequest& request) {
     double bench_s = 0;
     for (const LanePreview& lane : preview.lanes) {
         print("lane " + std::to_string(number(lane.saved.lane)) + " may write:\n");
-        for (const SavedField& field : lane.saved.fields) {
-            std::snprintf(line, sizeof line, "  %-26s 0x%04X mask 0x%-8X now %-10u limits %u..%u\n",
-                          field.field.text().c_str(), field.address, field.mask, field.value,
-                          field.lowest, field.highest);
-            print(line);
-        }
+        for (const SavedField& field : lane.saved.fields) print_field(field);
         for (const Request& asked : lane.first_batch) {
-            print("  first: " + codes_json(code_space_of(request.board), asked.codes).dump() + " " +
-                  asked.why + "\n");
+            print_pair("  first: " + codes_json(code_space_of(request.board), asked.codes).dump(),
+                       asked.why);
         }
         bench_s += lane.search_s + lane.compare_s;
     }
     std::snprintf(line, sizeof line,
-                  "bench time at most %.1f s over all lanes, %.1f s for the longest lane\n", bench_s,
-                  std::max_element(preview.lanes.begin(), preview.lanes.end(),
-                                   [](const LanePreview& a, const LanePreview& b) {
-                                       return a.search_s + a.compare_s < b.search_s + b.compare_s;
-                                   })
-                          ->search_s +
+                  "bench time at most %.1f s over all lanes, %.1f s for the longest lane\n",
+                  bench_s,
+                  std::max_element(
+                      preview.lanes.begin(), preview.lanes.end(),
+                      [](const LanePreview& a, const LanePreview& b) {
+                          return a.search_s + a.compare_s < b.search_s + b.compare_s;
+                      })->search_s +
                       preview.lanes.front().compare_s);
     print(line);
-    print("strobes and triggers that clear themselves are written by the declared sequences too\n");
+    print("strobes and triggers that clear themselves are written by the sequences too\n");
 }
 
 }  // namespace
 
-int dry_run(const BoardAtHand& at_hand, const TuneRequest& request, TimeSource& time, bool as_json) {
+int dry_run(const BoardAtHand& at_hand, const TuneRequest& request, TimeSource& time,
+            bool as_json) {
     auto seen = run_until_done(time, preview(at_hand, request, time));
     if (!seen) return report(seen.error(), as_json);
     auto note = read_note(at_hand.endpoint.note_path());

@@ -1,9 +1,10 @@
 // The words of the command line, and nothing else: each verb is one function in commands.hpp.
 
 #include <CLI/CLI.hpp>
-#include <cstdio>
+#include <algorithm>
 #include <exception>
 #include <string>
+#include <string_view>
 #include <vector>
 
 #include "daemon/cli/commands.hpp"
@@ -11,41 +12,48 @@
 #include "daemon/cli/log.hpp"
 #include "daemon/cli/terminal.hpp"
 #include "daemon/engine/version.hpp"
+#include "drivers/config/board_file.hpp"
 #include "drivers/config/json_reader.hpp"
 
 namespace {
 
 using namespace lanewright;
 
-constexpr const char* link_help = "tcp:HOST:PORT or serial:PATH, in place of the board file's link";
-constexpr const char* store_help = "the store's file; default $XDG_STATE_HOME/lanewright/store.db";
+constexpr const char* link_help = "tcp:HOST:PORT or serial:PATH; default: the board file's";
+constexpr const char* store_help = "default: $XDG_STATE_HOME/lanewright/store.db";
 constexpr const char* run_help = "a run's id, the beginning of one, or \"latest\"";
 
+// Empty where the text names a link.
+std::string why_no_link(const std::string& text) {
+    std::string why;
+    return parse_link(text, LinkDescription{}, why) ? std::string() : why;
+}
+
 void add_check(CLI::App& app, CheckOptions& options) {
-    CLI::App* verb = app.add_subcommand(
-        "check", "reach a board: identity, scratch write, link errors, round trips; moves no code");
+    CLI::App* verb = app.add_subcommand("check", "reach a board and try its link; moves no code");
     verb->add_option("--board", options.board_path, "board file")->required();
-    verb->add_option("--link", options.link, link_help);
+    verb->add_option("--link", options.link, link_help)->check(why_no_link);
     verb->add_flag("--json", options.json, "one JSON object on stdout");
 }
 
 void add_tune(CLI::App& app, TuneOptions& options) {
-    CLI::App* verb = app.add_subcommand(
-        "tune", "find, verify and set the codes of a board's lanes; resumes an interrupted run");
+    CLI::App* verb =
+        app.add_subcommand("tune", "find, verify and set codes; resumes an interrupted run");
     verb->add_option("--board", options.board_path, "board file")->required();
     verb->add_option("--recipe", options.recipe_path, "recipe file")->required();
-    verb->add_option("--link", options.link, link_help);
+    verb->add_option("--link", options.link, link_help)->check(why_no_link);
     verb->add_option("--lanes", options.lanes, "such as 0,2-5; default: the recipe's");
     verb->add_option("--store", options.store_path, store_help);
-    verb->add_option("--seed", options.seed, "of all random choices; default: the recipe's, else 1");
+    verb->add_option("--seed", options.seed, "default: the recipe's, else 1")
+        ->check(CLI::NonNegativeNumber);
     verb->add_option("--tag", options.tags, "KEY=VALUE, kept with the run; may be repeated")
         ->allow_extra_args(false);
     verb->add_option("--condition", options.condition, "the corner at hand, such as 85C-low");
     verb->add_option("--threads", options.threads, "threads that strategies compute on")
         ->check(CLI::Range(1u, 64u));
-    verb->add_flag("--new", options.anew, "begin a new run, even where one could be resumed");
+    verb->add_flag("--new", options.anew, "a new run, even where one could be resumed");
     verb->add_flag("--dry-run", options.dry_run,
-                   "reach and identify the board, write nothing, show what would be written");
+                   "show what would be written; writes nothing");
     verb->add_flag("--json", options.json, "one JSON object on stdout");
 }
 
@@ -63,8 +71,7 @@ void add_store_verbs(CLI::App& app, StoreOptions& runs, StoreOptions& show,
     CLI::App* out = app.add_subcommand("export", "a run for other programs");
     out->add_option("--store", exported.store_path, store_help);
     out->add_option("run", exported.run, run_help)->required();
-    out->add_option("--as", exported.format,
-                    "json: the result; csv: a row a reading; writes: the register writes")
+    out->add_option("--as", exported.format, "the result, a row a reading, or the register writes")
         ->required()
         ->check(CLI::IsMember({"json", "csv", "writes"}));
     out->add_option("--out", exported.out_path, "file to write; default: stdout");
@@ -75,7 +82,7 @@ void add_apply(CLI::App& app, ApplyOptions& options) {
         app.add_subcommand("apply", "write a run's codes to its board and read them back");
     verb->add_option("--store", options.store_path, store_help);
     verb->add_option("--board", options.board_path, "board file")->required();
-    verb->add_option("--link", options.link, link_help);
+    verb->add_option("--link", options.link, link_help)->check(why_no_link);
     verb->add_option("run", options.run, run_help)->required();
     verb->add_flag("--former", options.former, "the codes found before the run instead");
     verb->add_flag("--json", options.json, "one JSON object on stdout");
@@ -87,20 +94,28 @@ std::vector<std::string> verb_names(const CLI::App& app) {
     return names;
 }
 
+// Also where CLI11 did not get as far as the option.
+bool wants_json(int count, char** words) {
+    return std::any_of(words, words + count,
+                       [](const char* word) { return std::string_view(word) == "--json"; });
+}
+
 // CLI11 says of an unknown verb only that one is required.
 int refuse_usage(const CLI::App& app, const CLI::ParseError& error, int count, char** words) {
     const std::vector<std::string> names = verb_names(app);
     const std::string first = count > 1 ? words[1] : "";
+    const bool json = wants_json(count, words);
     const bool known = std::find(names.begin(), names.end(), first) != names.end();
     if (first.empty() || known || first.front() == '-') {
-        print_error(std::string("lanewright: ") + error.what());
+        report_usage(error.what(), json);
         print_error("Try: lanewright " + (known ? first + " " : std::string()) + "--help");
         return exit_usage;
     }
     const std::string near =
         nearest_word(first, std::vector<std::string_view>(names.begin(), names.end()));
-    print_error("lanewright: there is no verb \"" + first + "\"" +
-                (near.empty() ? "" : "; did you mean \"" + near + "\"?"));
+    report_usage("there is no verb \"" + first + "\"" +
+                     (near.empty() ? "" : "; did you mean \"" + near + "\"?"),
+                 json);
     print_error("Try: lanewright --help");
     return exit_usage;
 }
@@ -110,6 +125,7 @@ int run(int count, char** words) {
                  "lanewright"};
     app.set_version_flag("--version", "lanewright " + program_version() + " (" + git_hash() + ")");
     app.require_subcommand(1);
+    app.get_formatter()->column_width(24);  // texts have 56 of 80 columns
     CheckOptions check;
     TuneOptions tune;
     StoreOptions runs, show;
@@ -141,7 +157,9 @@ int main(int count, char** words) {
     try {
         return run(count, words);
     } catch (const std::exception& error) {
-        std::fprintf(stderr, "lanewright: unexpected: %s. Please report this\n", error.what());
-        return lanewright::exit_internal;
+        lanewright::Fault fault;
+        fault.cause = lanewright::Cause::internal;
+        fault.what = std::string("unexpected: ") + error.what() + ". Please report this";
+        return lanewright::report(fault, wants_json(count, words));
     }
 }

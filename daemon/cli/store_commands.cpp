@@ -22,13 +22,6 @@ std::string json_text(const nlohmann::ordered_json& value) {
     return value.dump(2, ' ', false, nlohmann::json::error_handler_t::replace) + "\n";
 }
 
-Fault store_fault(const StoreError& error) {
-    Fault fault;
-    fault.cause = dynamic_cast<const NoSuchRun*>(&error) != nullptr ? Cause::bad_data : Cause::io;
-    fault.what = error.what();
-    return fault;
-}
-
 std::string exported(const RunView& view, const std::string& format) {
     if (format == "csv") return readings_csv(view);
     if (format == "writes") return register_writes(view);
@@ -63,7 +56,7 @@ int run_runs(const StoreOptions& options) {
         print(json_text(out));
         return exit_ok;
     } catch (const StoreError& error) {
-        return report(store_fault(error), options.json);
+        return report(error.fault(), options.json);
     }
 }
 
@@ -75,7 +68,7 @@ int run_show(const StoreOptions& options) {
                            : run_account(view, may_colour(STDOUT_FILENO)));
         return exit_ok;
     } catch (const StoreError& error) {
-        return report(store_fault(error), options.json);
+        return report(error.fault(), options.json);
     }
 }
 
@@ -93,7 +86,7 @@ int run_export(const ExportOptions& options) {
         }
         return exit_ok;
     } catch (const StoreError& error) {
-        return report(store_fault(error), false);
+        return report(error.fault(), false);
     }
 }
 

@@ -13,7 +13,9 @@
 
 namespace lanewright {
 
-bool is_terminal(int descriptor) { return ::isatty(descriptor) == 1; }
+bool is_terminal(int descriptor) {
+    return ::isatty(descriptor) == 1;
+}
 
 bool may_colour(int descriptor) {
     const char* off = std::getenv("NO_COLOR");
@@ -33,15 +35,29 @@ void print_error(const std::string& text) {
     std::fflush(stderr);
 }
 
+namespace {
+
+void print_object(const nlohmann::ordered_json& object) {
+    print(object.dump(2, ' ', false, nlohmann::json::error_handler_t::replace) + "\n");
+}
+
+}  // namespace
+
 int report(const Fault& fault, bool json) {
     const int code = exit_code_of(fault.cause);
-    if (json) {
-        print(error_json(fault, code).dump(2, ' ', false,
-                                           nlohmann::json::error_handler_t::replace) +
-              "\n");
-    }
+    if (json) print_object(error_json(fault, code));
     print_error("lanewright: " + fault.text());
     return code;
+}
+
+int report_usage(const std::string& what, bool json) {
+    Fault fault;
+    fault.what = what;
+    auto object = error_json(fault, exit_usage);
+    object["error"]["cause"] = "usage";
+    if (json) print_object(object);
+    print_error("lanewright: " + what);
+    return exit_usage;
 }
 
 }  // namespace lanewright

@@ -12,10 +12,13 @@ namespace lanewright {
 bool may_colour(int descriptor);
 bool is_terminal(int descriptor);
 
-void print(const std::string& text);          // stdout
-void print_error(const std::string& text);    // stderr, with a newline; and the log
+void print(const std::string& text);        // stdout
+void print_error(const std::string& text);  // stderr, with a newline; and the log
 
-// The fault as the verb's last word: JSON object on stdout or a line on stderr; its exit code.
+// The fault as the verb's last word: a line on stderr, with --json an object on stdout too; its
+// exit code.
 int report(const Fault& fault, bool json);
+// The same for words of the command line that cannot be used; exit 64.
+int report_usage(const std::string& what, bool json);
 
 }  // namespace lanewright

@@ -118,14 +118,16 @@ ProgressPlan progress_plan(const TuneRequest& request) {
             request.recipe.budget.bench_s};
 }
 
-void say(const std::string& text) { print_error("lanewright: " + text); }
+void say(const std::string& text) {
+    print_error("lanewright: " + text);
+}
 
 Task<TuneOutcome> tune_at_hand(TuneJob& job, Store& store, Workers& workers, TimeSource& time,
                                Stop stop, Observer& progress, RunId& began) {
     auto board = co_await reach(job.at_hand.file, time);
     if (!board) co_return board.error();
     std::function<LinkCounts()> counts = [&board] { return counts_of(**board); };
-    Bench bench{(*board)->lanes(), store,   workers, time, stop, job.at_hand.endpoint.note_path(),
+    Bench bench{(*board)->lanes(), store,  workers, time, stop, job.at_hand.endpoint.note_path(),
                 {&progress},       counts, say};
     auto outcome =
         co_await tune_board(job.request, std::move(bench), store, job.at_hand.endpoint, &began);
@@ -170,15 +172,14 @@ int tune(const TuneOptions& options) {
 
     Stop stop(io);
     const ShutdownSignals signals(io, stop);
-    const std::string path =
-        options.store_path.empty() ? default_store_path() : options.store_path;
+    const std::string path = options.store_path.empty() ? default_store_path() : options.store_path;
     auto store = Store::open(path, time);
     if (!store) return report(store.error(), options.json);
     Workers workers(time, options.threads);
     Progress progress(progress_plan(job->request), is_terminal(STDERR_FILENO));
     RunId run;
-    auto outcome = run_until_done(
-        time, tune_at_hand(*job, **store, workers, time, stop, progress, run));
+    auto outcome =
+        run_until_done(time, tune_at_hand(*job, **store, workers, time, stop, progress, run));
     progress.finish();
     if (!outcome) return report_run_fault(outcome.error(), run, options.json);
     const Database database(path, Database::Mode::read_only);
@@ -188,18 +189,12 @@ int tune(const TuneOptions& options) {
 }  // namespace
 
 int run_tune(const TuneOptions& options) {
-    Fault fault;
     try {
         return tune(options);
     } catch (const UsageError& error) {
-        fault.what = error.what();
-        if (options.json) print(error_json(fault, exit_usage).dump(2) + "\n");
-        print_error("lanewright: " + fault.what);
-        return exit_usage;
+        return report_usage(error.what(), options.json);
     } catch (const StoreError& error) {
-        fault.cause = Cause::io;
-        fault.what = error.what();
-        return report(fault, options.json);
+        return report(error.fault(), options.json);
     }
 }
 

@@ -13,7 +13,7 @@ std::string program_version() { return LANEWRIGHT_VERSION; }
 std::string git_hash() { return LANEWRIGHT_GIT_HASH; }
 
 std::string build_description() {
-    return std::string("g++ ") + __VERSION__ + ", " + LANEWRIGHT_BUILD_TYPE;
+    return "g++ " __VERSION__ ", " LANEWRIGHT_BUILD_TYPE;
 }
 
 std::string cpu_description() {

@@ -67,7 +67,7 @@ CREATE TABLE readings (
 
 // f_type of file systems on which SQLite's locks cannot be relied upon (statfs(2), linux/magic.h).
 bool is_network_file_system(long type) {
-    constexpr std::array<unsigned long, 7> network{0x6969, 0x517B, 0xFF534D42, 0xFE534D42,
+    constexpr std::array<unsigned long, 7> network{0x6969,     0x517B,     0xFF534D42, 0xFE534D42,
                                                    0x00C36400, 0x5346414F, 0x73757245};
     for (const unsigned long magic : network) {
         if (static_cast<unsigned long>(type) == magic) return true;
@@ -76,7 +76,7 @@ bool is_network_file_system(long type) {
 }
 
 void refuse_network_file_system(const std::string& path) {
-    struct statfs info {};
+    struct statfs info{};
     const std::string folder = fs::absolute(path).parent_path().string();
     if (statfs(folder.c_str(), &info) == 0 && is_network_file_system(info.f_type)) {
         throw StoreError("the store " + path +
@@ -89,8 +89,8 @@ void make_parent(const std::string& path) {
     std::error_code error;
     fs::create_directories(fs::absolute(path).parent_path(), error);
     if (error) {
-        throw StoreError("the folder of the store " + path + " cannot be made: " +
-                         error.message() + ". Choose another path with --store");
+        throw StoreError("the folder of the store " + path + " cannot be made: " + error.message() +
+                         ". Choose another path with --store");
     }
 }
 
@@ -112,17 +112,18 @@ void check_schema(SQLite::Database& db, const std::string& path, Database::Mode 
     const bool empty = db.execAndGet("SELECT count(*) FROM sqlite_master").getInt() == 0;
     if (empty && mode == Database::Mode::read_write) return create_schema(db);
     if (empty || id != application_id) {
-        throw StoreError(path + " is not a store of this program. Choose another path with --store");
+        throw BadStoreData(path +
+                           " is not a store of this program. Choose another path with --store");
     }
     if (version > schema_version) {
-        throw StoreError("the store " + path + " has format " + std::to_string(version) +
-                         ", this version reads up to " + std::to_string(schema_version) +
-                         ". Use a newer version of the program");
+        throw BadStoreData("the store " + path + " has format " + std::to_string(version) +
+                           ", this version reads up to " + std::to_string(schema_version) +
+                           ". Use a newer version of the program");
     }
 }
 
 struct MeasuredColumns {
-    std::optional<Measured> Reading::*member;
+    std::optional<Measured> Reading::* member;
     int at;  // index of value; standard error and bound follow
 };
 constexpr std::array<MeasuredColumns, 6> measured_columns{{{&Reading::up_mv, 0},
@@ -148,7 +149,7 @@ void bind_measured(SQLite::Statement& statement, int at, const std::optional<Mea
 std::optional<Measured> measured_at(const SQLite::Statement& row, int at) {
     if (row.getColumn(at).isNull()) return std::nullopt;
     const int bound = row.getColumn(at + 2).getInt();
-    if (bound < 0 || bound > 2) throw StoreError("a reading holds an unknown bound");
+    if (bound < 0 || bound > 2) throw BadStoreData("a reading holds an unknown bound");
     return Measured{row.getColumn(at).getDouble(), row.getColumn(at + 1).getDouble(),
                     static_cast<Bound>(bound)};
 }
@@ -213,15 +214,30 @@ void fill_reading(const SQLite::Statement& row, ReadingTaken& taken) {
 [[noreturn]] void rethrow(const std::string& path, const SQLite::Exception& error) {
     std::string hint;
     switch (error.getErrorCode()) {
-        case SQLITE_FULL: hint = ". The disk is full: make room, then start the run again"; break;
-        case SQLITE_CANTOPEN: hint = ". Check the path and its permissions"; break;
-        case SQLITE_READONLY: hint = ". The file or its folder cannot be written"; break;
-        case SQLITE_NOTADB: hint = ". Choose another path with --store"; break;
-        case SQLITE_CORRUPT: hint = ". Keep the file for recovery and start a new store"; break;
-        default: break;
+        case SQLITE_FULL:
+            hint = ". The disk is full: make room, then start the run again";
+            break;
+        case SQLITE_CANTOPEN:
+            hint = ". Check the path and its permissions";
+            break;
+        case SQLITE_READONLY:
+            hint = ". The file or its folder cannot be written";
+            break;
+        case SQLITE_NOTADB:
+            hint = ". Choose another path with --store";
+            break;
+        case SQLITE_CORRUPT:
+            hint = ". Keep the file for recovery and start a new store";
+            break;
+        default:
+            break;
     }
-    throw StoreError("the store " + path + ": " + error.getErrorStr() + " (" + error.what() + ")" +
-                     hint);
+    const bool damaged =
+        error.getErrorCode() == SQLITE_NOTADB || error.getErrorCode() == SQLITE_CORRUPT;
+    const std::string general = error.getErrorStr(), particular = error.what();
+    throw StoreError("the store " + path + ": " + general +
+                         (particular == general ? "" : " (" + particular + ")") + hint,
+                     damaged ? Cause::bad_data : Cause::io);
 }
 
 }  // namespace
@@ -306,8 +322,8 @@ std::vector<RunRow> Database::runs() const {
         std::vector<RunRow> out;
         SQLite::Statement query(*db_, "SELECT id, manifest FROM runs ORDER BY started_ns, id");
         while (query.executeStep()) {
-            out.push_back({query.getColumn(0).getString(),
-                           decode_manifest(query.getColumn(1).getString())});
+            out.push_back(
+                {query.getColumn(0).getString(), decode_manifest(query.getColumn(1).getString())});
         }
         return out;
     } catch (const SQLite::Exception& error) {
@@ -326,8 +342,8 @@ RunRow Database::find_run(const std::string& id_or_prefix) const {
     }
     if (found.size() == 1) return *found.front();
     throw NoSuchRun((found.empty() ? "there is no run \"" : "more than one run begins with \"") +
-                     id_or_prefix + "\" in " + path_ + "; the newest is " + all.back().id +
-                     ". `lanewright runs` lists them");
+                    id_or_prefix + "\" in " + path_ + "; the newest is " + all.back().id +
+                    ". `lanewright runs` lists them");
 }
 
 std::vector<StoredEvent> Database::events(const RunId& run, EventSeq after,
@@ -347,7 +363,7 @@ std::vector<StoredEvent> Database::events(const RunId& run, EventSeq after,
                 decode_body(query.getColumn(2).getString(), query.getColumn(3).getString());
             if (auto* taken = std::get_if<ReadingTaken>(&stored.event)) {
                 if (query.getColumn(4).isNull()) {
-                    throw StoreError("the store " + path_ + " holds a reading without its row");
+                    throw BadStoreData("the store " + path_ + " holds a reading without its row");
                 }
                 fill_reading(query, *taken);
             }
@@ -357,7 +373,7 @@ std::vector<StoredEvent> Database::events(const RunId& run, EventSeq after,
     } catch (const SQLite::Exception& error) {
         rethrow(path_, error);
     } catch (const json::exception& error) {
-        throw StoreError("the store " + path_ + " holds a damaged reading: " + error.what());
+        throw BadStoreData("the store " + path_ + " holds a damaged reading: " + error.what());
     }
 }
 
@@ -376,6 +392,8 @@ std::string state_directory() {
     return "/var/lib/lanewright";
 }
 
-std::string default_store_path() { return state_directory() + "/store.db"; }
+std::string default_store_path() {
+    return state_directory() + "/store.db";
+}
 
 }  // namespace lanewright

@@ -203,10 +203,10 @@ Event decode_body(const std::string& kind, const std::string& body) {
         try {
             return codec.decode(json::parse(body));
         } catch (const json::exception& error) {
-            throw StoreError("an event of kind " + kind + " cannot be read: " + error.what());
+            throw BadStoreData("an event of kind " + kind + " cannot be read: " + error.what());
         }
     }
-    throw StoreError("the store holds an event of kind \"" + kind +
+    throw BadStoreData("the store holds an event of kind \"" + kind +
                      "\", which this version does not know");
 }
 

@@ -149,7 +149,7 @@ Manifest decode_manifest(const std::string& text) {
         value.at("condition").get_to(m.condition);
         return m;
     } catch (const json::exception& error) {
-        throw StoreError(std::string("a run's manifest cannot be read: ") + error.what());
+        throw BadStoreData(std::string("a run's manifest cannot be read: ") + error.what());
     }
 }
 

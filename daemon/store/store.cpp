@@ -26,7 +26,9 @@ struct Store::Pending {
 };
 
 Store::Store(std::string path, FileLock lock, std::unique_ptr<Database> database, TimeSource& time)
-    : path_(std::move(path)), lock_(std::move(lock)), database_(std::move(database)),
+    : path_(std::move(path)),
+      lock_(std::move(lock)),
+      database_(std::move(database)),
       thread_(time, 1) {}
 
 Store::~Store() = default;
@@ -42,7 +44,7 @@ Result<std::unique_ptr<Store>> Store::open(const std::string& path, TimeSource& 
         auto database = std::make_unique<Database>(path, Database::Mode::read_write);
         return std::unique_ptr<Store>(new Store(path, std::move(*lock), std::move(database), time));
     } catch (const StoreError& error) {
-        return io_fault(error.what());
+        return error.fault();
     }
 }
 

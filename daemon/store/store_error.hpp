@@ -5,17 +5,37 @@
 #include <stdexcept>
 #include <string>
 
+#include "drivers/faults/fault.hpp"
+
 namespace lanewright {
 
+// The store cannot be read or written.
 class StoreError : public std::runtime_error {
   public:
-    using std::runtime_error::runtime_error;
+    explicit StoreError(const std::string& what, Cause cause = Cause::io)
+        : std::runtime_error(what), cause_(cause) {}
+
+    Fault fault() const {
+        Fault out;
+        out.cause = cause_;
+        out.what = what();
+        return out;
+    }
+
+  private:
+    Cause cause_;
+};
+
+// It can be read, but what stands there is not what this program understands or was asked for.
+class BadStoreData : public StoreError {
+  public:
+    explicit BadStoreData(const std::string& what) : StoreError(what, Cause::bad_data) {}
 };
 
 // The store is fine; the run that was named is not in it.
-class NoSuchRun : public StoreError {
+class NoSuchRun : public BadStoreData {
   public:
-    using StoreError::StoreError;
+    using BadStoreData::BadStoreData;
 };
 
 }  // namespace lanewright

@@ -161,7 +161,7 @@ std::vector<WireOperation> wire_from(const json& value) {
     for (const json& entry : value) {
         WireOperation op;
         const int kind = entry.at(0).get<int>();
-        if (kind < 0 || kind > 3) throw StoreError("a wire record holds an unknown operation");
+        if (kind < 0 || kind > 3) throw BadStoreData("a wire record holds an unknown operation");
         op.kind = static_cast<WireOperation::Kind>(kind);
         op.address = entry.at(1).get<std::uint32_t>();
         op.mask = entry.at(2).get<std::uint32_t>();

@@ -25,7 +25,7 @@ struct Words {
         for (const auto& [entry, word] : entries) {
             if (text == word) return entry;
         }
-        throw StoreError("the store holds the word \"" + std::string(text) +
+        throw BadStoreData("the store holds the word \"" + std::string(text) +
                          "\", which this version does not know");
     }
 };

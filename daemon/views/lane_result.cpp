@@ -18,7 +18,7 @@ T decoded(const SourceFile& file, const Decode& decode) {
         out = decode(*document, complaints);
     }
     if (!out || complaints.any()) {
-        throw StoreError("the run's copy of " + file.path +
+        throw BadStoreData("the run's copy of " + file.path +
                          " cannot be read by this version:\n" + complaints.text());
     }
     return std::move(*out);

@@ -22,7 +22,8 @@ std::string codes_text(const CodeSpace& space, const Codes& codes, char between)
     std::string out;
     for (std::size_t i = 0; i < codes.value.size(); ++i) {
         if (!out.empty()) out += between;
-        if (i < space.dimensions().size() && between == ' ') out += space.dimensions()[i].name + "=";
+        if (i < space.dimensions().size() && between == ' ')
+            out += space.dimensions()[i].name + "=";
         out += std::to_string(codes.value[i]);
     }
     return out;
@@ -58,9 +59,12 @@ std::string limits_text(const std::optional<Margin>& margin) {
 
 const char* colour_of(Verdict verdict) {
     switch (verdict) {
-        case Verdict::meets: return "\033[32m";
-        case Verdict::fails: return "\033[31m";
-        case Verdict::undecided: return "\033[33m";
+        case Verdict::meets:
+            return "\033[32m";
+        case Verdict::fails:
+            return "\033[31m";
+        case Verdict::undecided:
+            return "\033[33m";
     }
     return "";
 }
@@ -74,23 +78,6 @@ std::string verdict_cell(const LaneResult& lane, bool colour) {
     if (!colour || (!lane.judgement && !failed)) return cell;
     const char* escape = failed ? "\033[31m" : colour_of(lane.judgement->verdict);
     return escape + cell + "\033[0m";
-}
-
-std::string head_of(const RunView& view) {
-    const Manifest& manifest = view.manifest;
-    std::string out = "run " + manifest.run + "  " + run_status(view.state) + "\n";
-    out += "board " + manifest.board + "  recipe " + manifest.recipe + "  seed " +
-           std::to_string(manifest.seed) + "  " + iso8601(manifest.started_ns, manifest.zone) + "\n";
-    if (!manifest.condition.empty()) out += "condition " + manifest.condition + "\n";
-    for (const auto& [key, value] : manifest.tags) out += "tag " + key + "=" + value + "\n";
-    const Required& required = view.recipe.required;
-    out += format("required %g mV x %g UI at error ratio %g", required.height_mv,
-                  required.width_ui, required.error_ratio) +
-           "\n";
-    if (manifest.identity.simulated) {
-        out += "SIMULATED BOARD: these results prove nothing about silicon\n";
-    }
-    return out;
 }
 
 // Breaks at spaces so that no line is longer than 80 columns.
@@ -107,6 +94,29 @@ std::string wrapped(const std::string& text, const std::string& indent) {
     return out + line + "\n";
 }
 
+// As it is where it fits, else broken at spaces.
+std::string fitted(const std::string& line) {
+    return line.size() <= 80 ? line + "\n" : wrapped(line, "  ");
+}
+
+std::string head_of(const RunView& view) {
+    const Manifest& manifest = view.manifest;
+    std::string out = "run " + manifest.run + "  " + run_status(view.state) + "\n";
+    out +=
+        fitted("board " + manifest.board + "  recipe " + manifest.recipe + "  seed " +
+               std::to_string(manifest.seed) + "  " + iso8601(manifest.started_ns, manifest.zone));
+    if (!manifest.condition.empty()) out += fitted("condition " + manifest.condition);
+    for (const auto& [key, value] : manifest.tags) out += fitted("tag " + key + "=" + value);
+    const Required& required = view.recipe.required;
+    out += format("required %g mV x %g UI at error ratio %g", required.height_mv, required.width_ui,
+                  required.error_ratio) +
+           "\n";
+    if (manifest.identity.simulated) {
+        out += "SIMULATED BOARD: these results prove nothing about silicon\n";
+    }
+    return out;
+}
+
 std::string csv_number(double value) {
     return std::isfinite(value) ? format("%.17g", value) : std::string();
 }
@@ -120,9 +130,12 @@ std::string csv_text(const std::string& text) {
 
 const char* name_of_bound(Bound bound) {
     switch (bound) {
-        case Bound::exact: return "exact";
-        case Bound::at_most: return "at_most";
-        case Bound::at_least: return "at_least";
+        case Bound::exact:
+            return "exact";
+        case Bound::at_most:
+            return "at_most";
+        case Bound::at_least:
+            return "at_least";
     }
     return "";
 }
@@ -130,7 +143,7 @@ const char* name_of_bound(Bound bound) {
 struct MeasuredColumn {
     const char* name;
     const char* unit;
-    std::optional<Measured> Reading::*member;
+    std::optional<Measured> Reading::* member;
 };
 constexpr MeasuredColumn measured_columns[] = {
     {"up", "mv", &Reading::up_mv},         {"down", "mv", &Reading::down_mv},
@@ -202,10 +215,12 @@ std::string lane_writes(const RunView& view, std::uint16_t lane, const Codes& co
         } else if (const auto* write = std::get_if<WriteStep>(&step)) {
             const auto* literal = std::get_if<std::uint32_t>(&write->value);
             if (literal != nullptr) {
-                line(write->field, *literal, write->field.text() + " = " + std::to_string(*literal));
+                line(write->field, *literal,
+                     write->field.text() + " = " + std::to_string(*literal));
             }
         } else if (const auto* pause = std::get_if<PauseStep>(&step)) {
-            out += "# lane " + std::to_string(lane) + format(": pause %g ms", pause->pause_ms) + "\n";
+            out +=
+                "# lane " + std::to_string(lane) + format(": pause %g ms", pause->pause_ms) + "\n";
         } else if (const auto* wait = std::get_if<WaitStep>(&step)) {
             out += "# lane " + std::to_string(lane) + ": wait until " + wait->field.text() +
                    format(" = %u, at most %g ms", wait->equals, wait->timeout_ms) + "\n";
@@ -219,8 +234,9 @@ std::string lane_sentence(const RunView& view, const LaneResult& lane) {
     std::string out = "lane " + std::to_string(lane.lane) + ": ";
     if (lane.former) out += codes_text(view.space, *lane.former, ' ');
     if (lane.decided && lane.former) {
-        out += *lane.decided == *lane.former ? " kept" : " became " +
-                                                             codes_text(view.space, *lane.decided, ' ');
+        out += *lane.decided == *lane.former
+                   ? " kept"
+                   : " became " + codes_text(view.space, *lane.decided, ' ');
     }
     out += "; " + (lane.reason.empty() ? std::string("not finished") : lane.reason);
     if (lane.judgement && !lane.judgement->reason.empty()) out += "; " + lane.judgement->reason;
@@ -240,10 +256,9 @@ std::string run_table(const RunView& view, bool colour) {
     const auto codes_cell = [&](const std::string& text) {
         return codes_fit ? format(" %-11s", text.c_str()) : std::string();
     };
-    std::string out = format("%4s  %-9s %-9s", "lane", "verdict", "outcome") +
-                      codes_cell(codes_head) +
-                      format(" %6s %6s %6s %5s %-10s %3s\n", "height", "width", "score", "score",
-                             "95 %", "n");
+    std::string out =
+        format("%4s  %-9s %-9s", "lane", "verdict", "outcome") + codes_cell(codes_head) +
+        format(" %6s %6s %6s %5s %-10s %3s\n", "height", "width", "score", "score", "95 %", "n");
     out += format("%4s  %-9s %-9s", "", "", "") + codes_cell("") +
            format(" %6s %6s %6s %5s %-10s\n", "mV", "UI", "before", "after", "limits");
     for (const LaneResult& lane : lane_results(view)) {
@@ -312,10 +327,11 @@ std::string register_writes(const RunView& view) {
         }
     }
     if (lines.empty()) {
-        throw StoreError("run " + view.manifest.run + " has no lane with decided codes to write");
+        throw BadStoreData("run " + view.manifest.run + " has no lane with decided codes to write");
     }
     std::string head = "# run " + view.manifest.run + ", board " + view.manifest.board + "\n";
-    if (view.manifest.identity.simulated) head += "# SIMULATED BOARD: proves nothing about silicon\n";
+    if (view.manifest.identity.simulated)
+        head += "# SIMULATED BOARD: proves nothing about silicon\n";
     return head + "# lane register    address mask    value\n" + lines;
 }
 

@@ -48,6 +48,7 @@ Fault Session::fault_of(Cause cause, std::string what) const {
 
 void Session::become(State state) {
     if (state_ == State::ready && state != State::ready) not_ready_since_ = time_.now();
+    if (state == State::greeting) sent_before_greeting_ = dialect_->counts().frames_sent;
     state_ = state;
     readiness_.raise();
     readiness_.lower();
@@ -162,7 +163,10 @@ Task<void> Session::wait_for_greeting(TimePoint deadline) {
             Fault fault = fault_of(Cause::timeout, "the board does not answer the " +
                                                        dialect_->traits().name + " greeting on " +
                                                        link_->traits().name);
-            const std::uint64_t bad = dialect_->counts().bad_frames;
+            const DialectCounts& counts = dialect_->counts();
+            fault.attempts = static_cast<int>(counts.frames_sent - sent_before_greeting_);
+            fault.attempt = fault.attempts;
+            const std::uint64_t bad = counts.bad_frames;
             fault.hint = bad > 0 ? std::to_string(bad) +
                                        " frames came that cannot be read: check "
                                        "the dialect, the baud rate and what else uses the line"

@@ -144,6 +144,7 @@ class Session final : public Registers {
     std::uint64_t next_ticket_ = 1;
     std::map<std::uint64_t, RequestPtr> requests_;  // under way, by ticket
     std::uint64_t retries_ = 0, opened_ = 0, resets_ = 0;
+    std::uint64_t sent_before_greeting_ = 0;  // frames
     std::uint32_t board_bad_frames_ = 0;
     std::map<Lane, std::uint64_t> resets_told_;  // a lane hears of each reset once
     RoundTrips round_trips_;

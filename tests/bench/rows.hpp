@@ -21,8 +21,8 @@ struct Row {
     double value = 0;
     std::string unit;
     Better better = Better::less;
-    std::optional<double> must;  // missed: reported as MISSED
-    std::optional<double> aim;   // what would be good
+    std::optional<double> must = std::nullopt;  // missed: reported as MISSED
+    std::optional<double> aim = std::nullopt;   // what would be good
     std::uint64_t n = 1;         // how often measured, or over how many cases
     std::uint64_t seed = 0;
 };
@@ -44,6 +44,9 @@ class Rows {
     explicit Rows(std::ostream& out);
 
     void row(const Row& row);
+
+    // The value of the calibration row.
+    double calibration_s() const { return rows_.front().value; }
 
     // Prints the table and the summary. Returns 0, the exit status of a benchmark.
     int finish();

@@ -53,10 +53,13 @@ class KillAndResume(unittest.TestCase):
             words += ["--die", die]
         return cls.bench.run(*words, program=CRASH_RUNNER)
 
-    def kill_then_resume(self, die, second_death=None):
+    def kill_then_resume(self, die, second_death=None, may_miss=False):
+        """What the resumed run said; None if the run ended before the point, where it may."""
         store = self.bench.path(f"killed-{die.replace(':', '-')}-{second_death or ''}.db")
         with Target(self.bench) as target:
             done = self.run_mortally(target, store, die)
+            if done.returncode == 0 and may_miss and not die.startswith("stored"):
+                return None
             self.assertEqual(done.returncode, -signal.SIGKILL, f"{die}: {done.stderr}")
             before = self.bench.readings(store=store) if self.has_run(store) else []
             if second_death:
@@ -104,14 +107,17 @@ class KillAndResume(unittest.TestCase):
         weights = [count for _, count in kinds]
         for _ in range(COUNT):
             kind, count = draw.choices(kinds, weights)[0]
-            die = f"{kind}:{draw.randint(1, int(count * 0.98))}"
-            with self.subTest(die=die, seed=SEED):
-                self.kill_then_resume(die)
+            number = draw.randint(1, int(count * 0.98))
+            with self.subTest(die=f"{kind}:{number}", seed=SEED):
+                # On a busy machine more bytes go out, and come in, at once: fewer such points.
+                while self.kill_then_resume(f"{kind}:{number}", may_miss=True) is None:
+                    number = max(1, number * 2 // 3)
 
     def test_restore_comes_first_even_with_another_store(self):
         with Target(self.bench) as target:
             store = self.bench.path("first.db")
-            done = self.run_mortally(target, store, f"stored.reading:{self.points['stored.reading'] // 2}")
+            middle = self.points["stored.reading"] // 2
+            done = self.run_mortally(target, store, f"stored.reading:{middle}")
             self.assertEqual(done.returncode, -signal.SIGKILL)
             moved = self.bench.codes_on_board(target.link)
             self.assertNotEqual(moved, self.former, "the kill came before any code had moved")

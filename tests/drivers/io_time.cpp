@@ -196,15 +196,6 @@ TEST_CASE("A task group keeps the first real fault and names the task that threw
     CHECK(run_until_done(bench.time, group.join()).has_value());
 }
 
-TEST_CASE("Virtual time reports tasks that wait for nothing that can come") {
-    Bench bench;
-    bench.time.hold();
-    bench.time.release();
-    TaskGroup group(bench.io);
-    const auto pending = run_until_done(bench.time, hours_of_bench(bench.time, 1, Stop(bench.io)));
-    CHECK(pending.has_value());
-}
-
 TEST_CASE("A job runs on the pool, comes back to the io thread, and virtual time stands still") {
     Bench bench;
     Workers workers(bench.time, 2);

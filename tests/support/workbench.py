@@ -4,14 +4,20 @@ Python's standard library only. The build folder comes from LANEWRIGHT_BUILD (se
 """
 
 import csv
+import fcntl
 import io
 import json
 import os
 import pathlib
+import pty
+import re
 import shutil
 import signal
+import struct
 import subprocess
 import tempfile
+import termios
+import threading
 import time
 
 SOURCE = pathlib.Path(__file__).resolve().parents[2]
@@ -105,6 +111,33 @@ class Bench:
         return subprocess.Popen([str(program), *map(str, words)], env=self.environment,
                                 stdout=subprocess.PIPE, stderr=subprocess.PIPE, text=True)
 
+    def on_terminal(self, *words, columns=80, environment=None, timeout=60):
+        """Runs a verb whose output goes to a terminal; its exit code and all it printed there."""
+        ours, theirs = pty.openpty()
+        fcntl.ioctl(theirs, termios.TIOCSWINSZ, struct.pack("HHHH", 25, columns, 0, 0))
+        running = subprocess.Popen([str(LANEWRIGHT), *map(str, words)], stdin=subprocess.DEVNULL,
+                                   stdout=theirs, stderr=theirs,
+                                   env={**self.environment, "TERM": "xterm", **(environment or {})})
+        os.close(theirs)
+        printed = bytearray()
+
+        def drain():
+            try:
+                while data := os.read(ours, 65536):
+                    printed.extend(data)
+            except OSError:  # how Linux says that the other end was closed
+                pass
+
+        reader = threading.Thread(target=drain)
+        reader.start()
+        try:
+            code = running.wait(timeout)
+        finally:
+            running.kill()
+            reader.join()
+            os.close(ours)
+        return code, printed.decode()
+
     def tune_words(self, link, *more, store=None, recipe=None, board=None):
         return ["tune", "--board", board or self.board, "--recipe", recipe or self.recipe,
                 "--link", link, "--store", store or self.path("store.db"), *more]
@@ -114,7 +147,8 @@ class Bench:
         try:
             return done.returncode, json.loads(done.stdout), done.stderr
         except json.JSONDecodeError as error:
-            raise AssertionError(f"stdout is no JSON object: {done.stdout!r}\n{done.stderr}") from error
+            raise AssertionError(f"stdout is no JSON object: {done.stdout!r}\n"
+                                 f"{done.stderr}") from error
 
     def readings(self, run="latest", store=None):
         """The readings of a run as rows, without what differs between equal runs."""
@@ -126,9 +160,9 @@ class Bench:
         return sorted(rows, key=lambda row: (int(row["lane"]), int(row["ordinal"])))
 
     def codes_on_board(self, link):
-        """What stands in the tuned fields, read by a dry run, by lane."""
-        done = self.run("tune", "--board", self.board, "--recipe", self.recipe, "--link", link,
-                        "--dry-run", "--json")
+        """What stands in the tuned fields of all lanes, read by a dry run, by lane."""
+        done = self.run("tune", "--board", self.board, "--recipe", SOURCE
+                        / "configs/recipes/demo.json", "--link", link, "--dry-run", "--json")
         assert done.returncode == 0, done.stderr
         out = {}
         for lane in json.loads(done.stdout)["lanes"]:
@@ -146,6 +180,15 @@ class Bench:
 
     def __exit__(self, *_):
         self.close()
+
+
+ESCAPE = re.compile(r"\x1b\[[0-9;?]*[A-Za-z]")
+
+
+def too_wide(text, columns=80):
+    """The lines of a terminal's output that are wider than it, colours and moves left out."""
+    lines = re.split(r"[\r\n]+", ESCAPE.sub("", text))
+    return [line for line in lines if len(line) > columns]
 
 
 def decisions(result):

@@ -125,7 +125,7 @@ class LockHolder {
 }  // namespace
 
 TEST_CASE("Two thousand transactions over a bad wire with resets accept no wrong value") {
-    constexpr std::uint32_t count_of_lane = 125;  // half are two batches or more
+    constexpr std::uint32_t count_of_lane = 125;
     const bool serial = GENERATE(false, true);
     const Wire expected = undisturbed(count_of_lane);
     TargetProcess process(with_faults({{"seed", 7},
@@ -140,8 +140,8 @@ TEST_CASE("Two thousand transactions over a bad wire with resets accept no wrong
     REQUIRE(opened.has_value());
     Tally tally;
     Wire wire;
-    // 8 lanes, 125 each: 1,000 units of work, of which every second is an apply and a read of the
-    // codes, the others a reading each; twice over makes more than 2,000 transactions.
+    // Twice 8 lanes with 125 units of work each: 2,000 batches at least, and 1,000 more for the
+    // codes read back on their own.
     for (int round = 0; round < 2; ++round) {
         const auto result = work(bench, count_of_lane, tally, wire);
         INFO((result.has_error() ? result.error().text() : std::string()));

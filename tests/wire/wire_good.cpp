@@ -133,7 +133,7 @@ TEST_CASE("The simulated board ends on SIGTERM with code 0 and takes its link al
     CHECK_FALSE(std::filesystem::is_symlink(process.pty_path()));
 }
 
-TEST_CASE("A board that is started anew shows as a reset to a session that goes on") {
+TEST_CASE("A reset in mid-batch makes its reading void, and the reading is taken anew") {
     nlohmann::json target = demo_target();
     target["faults"]["reset"]["at_batches"] = {12};
     TargetProcess process(target);

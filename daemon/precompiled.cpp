@@ -1,0 +1,1 @@
+// Compiled only so that its precompiled header exists; see CMakeLists.txt.
