@@ -13,7 +13,8 @@ Fault fault_of(const Complaints& complaints) {
     const std::size_t count = complaints.all().size();
     std::string text = complaints.text();
     while (!text.empty() && text.back() == '\n') text.pop_back();
-    fault.what = std::to_string(count) + (count == 1 ? " error in the files:\n" : " errors in the files:\n") + text;
+    fault.what = std::to_string(count) +
+                 (count == 1 ? " error in the files:\n" : " errors in the files:\n") + text;
     return fault;
 }
 

@@ -20,7 +20,9 @@ double milliseconds(std::chrono::nanoseconds time) {
 }
 
 // Upper end of a bin of the histogram: 2^i microseconds.
-double bin_end_ms(std::size_t bin) { return std::ldexp(1e-3, static_cast<int>(bin)); }
+double bin_end_ms(std::size_t bin) {
+    return std::ldexp(1e-3, static_cast<int>(bin));
+}
 
 Task<CheckReport> check_at_hand(const BoardAtHand& at_hand, TimeSource& time) {
     auto board = co_await reach(at_hand.file, time);
@@ -92,10 +94,11 @@ void print_report(const CheckReport& report, const BoardFile& file, const std::s
         static_cast<unsigned long long>(report.link.retries),
         static_cast<unsigned long long>(report.link.resets));
     say("round trips: %llu, mean %.3f ms, longest %.3f ms\n",
-        static_cast<unsigned long long>(report.round_trips.count()), milliseconds(report.round_trips.mean()),
-        milliseconds(report.round_trips.longest()));
+        static_cast<unsigned long long>(report.round_trips.count()),
+        milliseconds(report.round_trips.mean()), milliseconds(report.round_trips.longest()));
     const auto& bins = report.round_trips.bins();
-    const std::uint64_t most = std::max<std::uint64_t>(1, *std::max_element(bins.begin(), bins.end()));
+    const std::uint64_t most =
+        std::max<std::uint64_t>(1, *std::max_element(bins.begin(), bins.end()));
     for (std::size_t bin = 0; bin < bins.size(); ++bin) {
         if (bins[bin] == 0) continue;
         const std::string bar(std::max<std::size_t>(1, 40 * bins[bin] / most), '#');

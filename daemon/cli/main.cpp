@@ -52,8 +52,7 @@ void add_tune(CLI::App& app, TuneOptions& options) {
     verb->add_option("--threads", options.threads, "threads that strategies compute on")
         ->check(CLI::Range(1u, 64u));
     verb->add_flag("--new", options.anew, "a new run, even where one could be resumed");
-    verb->add_flag("--dry-run", options.dry_run,
-                   "show what would be written; writes nothing");
+    verb->add_flag("--dry-run", options.dry_run, "show what would be written; writes nothing");
     verb->add_flag("--json", options.json, "one JSON object on stdout");
 }
 

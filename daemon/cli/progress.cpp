@@ -6,6 +6,7 @@
 
 #include "adapt/search/score.hpp"
 #include "daemon/cli/log.hpp"
+#include "daemon/cli/terminal.hpp"
 
 namespace lanewright {
 
@@ -22,8 +23,7 @@ std::string short_phase(const std::string& why) {
 
 }  // namespace
 
-Progress::Progress(ProgressPlan plan, bool terminal)
-    : plan_(std::move(plan)), terminal_(terminal) {
+Progress::Progress(ProgressPlan plan, bool terminal) : plan_(std::move(plan)), terminal_(terminal) {
     for (const std::uint16_t lane : plan_.lanes) lines_[lane];
 }
 
@@ -41,11 +41,12 @@ void Progress::take(const StoredEvent& stored) {
     if (!lane || lines_.find(number(*lane)) == lines_.end()) return;
     LaneLine& line = lines_[number(*lane)];
     if (const auto* intent = std::get_if<Intent>(&stored.event)) {
-        line.phase = intent->stage == Stage::compare ? "before/after"
-                                                     : short_phase(intent->request.why);
+        line.phase =
+            intent->stage == Stage::compare ? "before/after" : short_phase(intent->request.why);
     } else if (const auto* taken = std::get_if<ReadingTaken>(&stored.event)) {
         const double score = score_of(taken->reading, plan_.required).value;
-        if (std::isfinite(score)) line.best_score = std::max(score, line.best_score.value_or(score));
+        if (std::isfinite(score))
+            line.best_score = std::max(score, line.best_score.value_or(score));
         ++line.reading_count;
         line.bench_s += taken->reading.cost_s;
         if (line.phase != "before/after") line.search_s += taken->reading.cost_s;
@@ -58,8 +59,9 @@ void Progress::take(const StoredEvent& stored) {
     } else if (const auto* finished = std::get_if<LaneFinished>(&stored.event)) {
         line.phase = name_of(finished->outcome);
         line.done = true;
-        say(number(*lane), std::string(name_of(finished->outcome)) +
-                               (finished->outcome == LaneOutcome::failed ? ": " + finished->reason : ""));
+        say(number(*lane),
+            std::string(name_of(finished->outcome)) +
+                (finished->outcome == LaneOutcome::failed ? ": " + finished->reason : ""));
     }
     if (terminal_) draw(false);
 }
@@ -76,8 +78,8 @@ std::string Progress::time_left(const LaneLine& line) const {
     if (line.reading_count == 0 || (plan_.budget_readings <= 0 && plan_.budget_bench_s <= 0)) {
         return "?";
     }
-    const double each = line.search_s > 0 ? line.search_s / static_cast<double>(line.reading_count)
-                                          : 0;
+    const double each =
+        line.search_s > 0 ? line.search_s / static_cast<double>(line.reading_count) : 0;
     double left = plan_.budget_bench_s > 0 ? plan_.budget_bench_s - line.search_s : 1e9;
     if (plan_.budget_readings > 0) {
         left = std::min(left, plan_.budget_readings * each - line.search_s);
@@ -107,6 +109,15 @@ void Progress::draw(bool now) {
     drawn_ = lines_.size();
     std::fputs(out.c_str(), stderr);
     std::fflush(stderr);
+}
+
+void Progress::interject(const std::string& text) {
+    if (terminal_ && drawn_ > 0) {
+        std::fprintf(stderr, "\033[%zuA\r\033[J", drawn_);
+        drawn_ = 0;
+    }
+    print_error(text);
+    if (terminal_ && last_drawn_ != std::chrono::steady_clock::time_point{}) draw(true);
 }
 
 void Progress::finish() {

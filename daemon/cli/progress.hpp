@@ -29,6 +29,9 @@ class Progress : public Observer {
 
     void on_event(const StoredEvent& event) noexcept override;
 
+    // A line for people, above the lanes' lines where these are redrawn in place.
+    void interject(const std::string& text);
+
     // The last state of all lanes stays on the screen.
     void finish();
 

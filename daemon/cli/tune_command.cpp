@@ -123,12 +123,15 @@ void say(const std::string& text) {
 }
 
 Task<TuneOutcome> tune_at_hand(TuneJob& job, Store& store, Workers& workers, TimeSource& time,
-                               Stop stop, Observer& progress, RunId& began) {
+                               Stop stop, Progress& progress, RunId& began) {
     auto board = co_await reach(job.at_hand.file, time);
     if (!board) co_return board.error();
     std::function<LinkCounts()> counts = [&board] { return counts_of(**board); };
+    std::function<void(const std::string&)> tell = [&progress](const std::string& text) {
+        progress.interject("lanewright: " + text);
+    };
     Bench bench{(*board)->lanes(), store,  workers, time, stop, job.at_hand.endpoint.note_path(),
-                {&progress},       counts, say};
+                {&progress},       counts, tell};
     auto outcome =
         co_await tune_board(job.request, std::move(bench), store, job.at_hand.endpoint, &began);
     auto closed = co_await (*board)->close();

@@ -105,9 +105,9 @@ Result<Endpoint> Endpoint::take(const LinkDescription& link) {
 Result<void> Endpoint::describe(const std::string& store, const std::string& run) const {
     std::error_code error;
     const bool pending = fs::exists(note_path_, error);
-    return lock_.describe("endpoint=" + name_ + "\nnote=" + note_path_ + "\nrestore=" +
-                          (pending ? "pending" : "none") + "\nstore=" + store + "\nrun=" + run +
-                          "\n");
+    return lock_.describe("endpoint=" + name_ + "\nnote=" + note_path_ +
+                          "\nrestore=" + (pending ? "pending" : "none") + "\nstore=" + store +
+                          "\nrun=" + run + "\n");
 }
 
 }  // namespace lanewright

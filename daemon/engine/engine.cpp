@@ -26,10 +26,13 @@ Reaction reaction_to(Cause cause) {
         case Cause::board_reset:
         case Cause::outcome_unknown:
         case Cause::not_accepted:
-        case Cause::wait_expired: return Reaction::read_anew;
+        case Cause::wait_expired:
+            return Reaction::read_anew;
         case Cause::refused:
-        case Cause::not_allowed: return Reaction::fail_lane;
-        default: return Reaction::end_run;
+        case Cause::not_allowed:
+            return Reaction::fail_lane;
+        default:
+            return Reaction::end_run;
     }
 }
 
@@ -78,7 +81,7 @@ class Engine {
     std::map<std::uint16_t, LaneJob> jobs_;
     TimePoint started_{};
     std::uint64_t resets_known_ = 0;
-    bool failed_ = false;  // a lane met what ends the run, or the store does
+    bool failed_ = false;    // a lane met what ends the run, or the store does
     std::string unsettled_;  // what could not be put where it belongs, for the run's last words
 };
 
@@ -124,7 +127,9 @@ Task<void> Engine::append(Event event) {
     return append(std::move(one));
 }
 
-Result<void> Engine::note_changed() { return write_note(bench_.note_path, plan_.note); }
+Result<void> Engine::note_changed() {
+    return write_note(bench_.note_path, plan_.note);
+}
 
 // Whether the lane's decided codes are to stay on the chip, should the run end now.
 bool Engine::keeps_decision(const LaneState& lane) const {
@@ -175,7 +180,8 @@ Task<bool> Engine::measure(Lane lane, DoMeasure what) {
 // After a reset every lane of the board holds its reset codes, those that had been settled too.
 void Engine::board_was_reset() {
     const std::uint64_t resets = bench_.link_counts().resets;
-    if (resets == resets_known_) return;  // another lane has told; lanes may be settled again by now
+    if (resets == resets_known_)
+        return;  // another lane has told; lanes may be settled again by now
     resets_known_ = resets;
     bench_.say("the board has reset; lanes outside this run hold their reset codes now");
     bool changed = false;
@@ -192,9 +198,12 @@ void Engine::board_was_reset() {
 Task<bool> Engine::reading_failed(Lane lane, DoMeasure what, Fault fault) {
     if (fault.cause == Cause::stopped) co_return false;
     switch (reaction_to(fault.cause)) {
-        case Reaction::end_run: co_return fault;
-        case Reaction::fail_lane: co_return co_await fail_lane(lane, std::move(fault));
-        case Reaction::read_anew: break;
+        case Reaction::end_run:
+            co_return fault;
+        case Reaction::fail_lane:
+            co_return co_await fail_lane(lane, std::move(fault));
+        case Reaction::read_anew:
+            break;
     }
     if (fault.cause == Cause::board_reset) board_was_reset();
     auto storing = append(ReadingVoid{lane, what.ordinal, what.attempt, fault.text()});
@@ -306,7 +315,8 @@ Task<void> Engine::lane_task(Lane lane) {
         if (!next.diverged.empty()) {
             Fault fault;
             fault.cause = Cause::diverged;
-            fault.what = "the stored run would not repeat itself with this program: " + next.diverged;
+            fault.what =
+                "the stored run would not repeat itself with this program: " + next.diverged;
             fault.hint = "Use the version that began it, or start anew with --new";
             failed_ = true;
             co_return fault;
@@ -377,8 +387,9 @@ RunEnded Engine::ended(const Result<void>& outcome) const {
     }
     if (!unsettled_.empty()) {
         out.reason += (out.reason.empty() ? "" : ". ");
-        out.reason += "Lanes " + unsettled_ + " do not hold the codes they should; these stand in " +
-                      bench_.note_path + " and are written at the next contact";
+        out.reason += "Lanes " + unsettled_ +
+                      " do not hold the codes they should; these stand in " + bench_.note_path +
+                      " and are written at the next contact";
     }
     out.link = bench_.link_counts();
     out.wall_s = std::chrono::duration<double>(bench_.time.now() - started_).count();

@@ -38,7 +38,7 @@ struct RunPlan {
     Manifest manifest;
     BoardFile board;
     Recipe recipe;
-    RestoreNote note;   // endpoint, board, identity, run and store filled in; no lanes yet
+    RestoreNote note;  // endpoint, board, identity, run and store filled in; no lanes yet
 };
 
 // Runs, or goes on with, the run whose events so far are `history`. Returns how it ended; a Fault

@@ -43,8 +43,8 @@ void LaneMachine::start_search(const SavedLane& saved) {
     setup_.problem.present = codes_of(saved);
     setup_.space = held_at_present(setup_.space, setup_.tuned, setup_.problem.present);
     setup_.problem.space = &setup_.space;
-    procedure_ = setup_.make(setup_.problem, {},
-                             RandomKey{setup_.seed, number(lane_), purpose_strategy, 0});
+    procedure_ =
+        setup_.make(setup_.problem, {}, RandomKey{setup_.seed, number(lane_), purpose_strategy, 0});
 }
 
 void LaneMachine::start_compare(const Decision& decision) {
@@ -127,8 +127,8 @@ Action LaneMachine::next() {
     if (attempt_ >= setup_.most_attempts) {
         if (!settled_) return DoSettle{Settlement::restored, setup_.problem.present};
         return DoFinish{LaneOutcome::failed, "reading " + std::to_string(next_ordinal_) +
-                                             " came to nothing " + std::to_string(attempt_) +
-                                             " times, last: " + last_void_};
+                                                 " came to nothing " + std::to_string(attempt_) +
+                                                 " times, last: " + last_void_};
     }
     if (const std::vector<Request>& proposed = batch(); !proposed.empty()) {
         return DoMeasure{next_ordinal_, attempt_, stage_, proposed[got_.size()]};

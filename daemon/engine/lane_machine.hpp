@@ -25,14 +25,14 @@ class Diverged : public std::runtime_error {
 };
 
 struct LaneSetup {
-    LaneProblem problem;          // `space` and `present` are filled in once the codes are saved
-    CodeSpace space;              // all the board's dimensions
-    std::vector<bool> tuned;      // those the recipe moves; the others stay as found
+    LaneProblem problem;      // `space` and `present` are filled in once the codes are saved
+    CodeSpace space;          // all the board's dimensions
+    std::vector<bool> tuned;  // those the recipe moves; the others stay as found
     MakeProcedure make = nullptr;
     std::uint64_t seed = 0;
     std::uint32_t verify_rounds = 1;
-    bool leave = true;                  // leave the decided codes, or restore the former
-    std::uint32_t most_attempts = 6;    // of one reading, before the lane fails
+    bool leave = true;                // leave the decided codes, or restore the former
+    std::uint32_t most_attempts = 6;  // of one reading, before the lane fails
 };
 
 // What to do next.

@@ -9,11 +9,16 @@ namespace {
 
 Part part_of(PartName part) {
     switch (part) {
-        case PartName::series_resistor: return Part::series_resistor;
-        case PartName::series_capacitor: return Part::series_capacitor;
-        case PartName::shunt_resistor: return Part::shunt_resistor;
-        case PartName::shunt_capacitor: return Part::shunt_capacitor;
-        case PartName::other: break;
+        case PartName::series_resistor:
+            return Part::series_resistor;
+        case PartName::series_capacitor:
+            return Part::series_capacitor;
+        case PartName::shunt_resistor:
+            return Part::shunt_resistor;
+        case PartName::shunt_capacitor:
+            return Part::shunt_capacitor;
+        case PartName::other:
+            break;
     }
     return Part::other;
 }
@@ -37,13 +42,13 @@ std::size_t index_of(const std::vector<Dimension>& dimensions, const std::string
 }
 
 bool takes_power_of_two(const BoardFile& board) {
-    return std::any_of(
-        board.monitor.sequence.begin(), board.monitor.sequence.end(), [](const Step& step) {
-            const auto* write = std::get_if<WriteStep>(&step);
-            if (write == nullptr) return false;
-            const auto* parameter = std::get_if<Parameter>(&write->value);
-            return parameter != nullptr && *parameter == Parameter::dwell_log2;
-        });
+    return std::any_of(board.monitor.sequence.begin(), board.monitor.sequence.end(),
+                       [](const Step& step) {
+                           const auto* write = std::get_if<WriteStep>(&step);
+                           if (write == nullptr) return false;
+                           const auto* parameter = std::get_if<Parameter>(&write->value);
+                           return parameter != nullptr && *parameter == Parameter::dwell_log2;
+                       });
 }
 
 }  // namespace

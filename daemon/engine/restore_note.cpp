@@ -52,11 +52,13 @@ bool sync_folder(const std::string& path) {
 Result<void> replace_file(const std::string& path, const std::string& text) {
     const std::string beside = path + ".new";
     const int file = ::open(beside.c_str(), O_WRONLY | O_CREAT | O_TRUNC | O_CLOEXEC, 0644);
-    if (file < 0) return io_fault("the restore note cannot be written", beside, std::strerror(errno));
+    if (file < 0)
+        return io_fault("the restore note cannot be written", beside, std::strerror(errno));
     const bool written = write_all(file, text) && ::fsync(file) == 0;
     const int error = errno;
     ::close(file);
-    if (!written) return io_fault("the restore note cannot be written", beside, std::strerror(error));
+    if (!written)
+        return io_fault("the restore note cannot be written", beside, std::strerror(error));
     if (::rename(beside.c_str(), path.c_str()) != 0 || !sync_folder(path)) {
         return io_fault("the restore note cannot be written", path, std::strerror(errno));
     }
@@ -66,12 +68,9 @@ Result<void> replace_file(const std::string& path, const std::string& text) {
 json encode(const RestoreNote& note) {
     json lanes = json::array();
     for (const SavedLane& lane : note.lanes) lanes.push_back(to_json_value(lane));
-    return {{"format", note_format},
-            {"endpoint", note.endpoint},
-            {"board", note.board},
-            {"identity", to_json_value(note.identity)},
-            {"run", note.run},
-            {"store", note.store},
+    return {{"format", note_format},    {"endpoint", note.endpoint},
+            {"board", note.board},      {"identity", to_json_value(note.identity)},
+            {"run", note.run},          {"store", note.store},
             {"lanes", std::move(lanes)}};
 }
 
@@ -133,7 +132,8 @@ Result<std::optional<RestoreNote>> read_note(const std::string& path) {
         return std::optional<RestoreNote>{decode(json::parse(text.str()))};
     } catch (const std::exception& problem) {
         Fault fault = io_fault("the restore note cannot be understood", path, problem.what());
-        fault.hint = "It holds the codes that the board had; write them by hand, then move the file";
+        fault.hint =
+            "It holds the codes that the board had; write them by hand, then move the file";
         return fault;
     }
 }

@@ -38,49 +38,48 @@ std::optional<Codes> LaneState::former() const {
 }
 
 void RunState::apply(const StoredEvent& stored) {
-    std::visit(
-        Overloaded{
-            [&](const Identified& e) { identity = e.identity; },
-            [&](const LaneSaved& e) { lanes[number(e.saved.lane)].saved = e.saved; },
-            [&](const Intent& e) {
-                LaneState& lane = lanes[number(e.lane)];
-                lane.moved = true;
-                lane.settled.reset();
-                intents_[{number(e.lane), e.ordinal}] = {e.stage, e.request.why};
-            },
-            [&](const ReadingTaken& e) {
-                const auto& [stage, why] = intents_[{number(e.lane), e.ordinal}];
-                lanes[number(e.lane)].readings.push_back(
-                    {e.ordinal, stage, why, e.reading, stored.at_ns});
-            },
-            [&](const ReadingVoid& e) { ++lanes[number(e.lane)].void_count; },
-            [&](const LaneDecided& e) { lanes[number(e.lane)].decision = e.decision; },
-            [&](const LaneSettled& e) {
-                LaneState& lane = lanes[number(e.lane)];
-                lane.moved = false;
-                lane.settled = e.settlement;
-            },
-            [&](const LaneFinished& e) { lanes[number(e.lane)].finished = e; },
-            [&](const RunResumed&) {
-                ended.reset();
-                ++resumptions;
-            },
-            [&](const RunEnded& e) {
-                ended = e;
-                wall_s += e.wall_s;
-                link.frames += e.link.frames;
-                link.bad_frames += e.link.bad_frames;
-                link.retries += e.link.retries;
-                link.reconnects += e.link.reconnects;
-                link.resets += e.link.resets;
-            },
-            [&](const CodesWritten& e) {
-                LaneState& lane = lanes[number(e.lane)];
-                lane.last_written = e.codes;
-                lane.moved = false;
-            },
-        },
-        stored.event);
+    std::visit(Overloaded{
+                   [&](const Identified& e) { identity = e.identity; },
+                   [&](const LaneSaved& e) { lanes[number(e.saved.lane)].saved = e.saved; },
+                   [&](const Intent& e) {
+                       LaneState& lane = lanes[number(e.lane)];
+                       lane.moved = true;
+                       lane.settled.reset();
+                       intents_[{number(e.lane), e.ordinal}] = {e.stage, e.request.why};
+                   },
+                   [&](const ReadingTaken& e) {
+                       const auto& [stage, why] = intents_[{number(e.lane), e.ordinal}];
+                       lanes[number(e.lane)].readings.push_back(
+                           {e.ordinal, stage, why, e.reading, stored.at_ns});
+                   },
+                   [&](const ReadingVoid& e) { ++lanes[number(e.lane)].void_count; },
+                   [&](const LaneDecided& e) { lanes[number(e.lane)].decision = e.decision; },
+                   [&](const LaneSettled& e) {
+                       LaneState& lane = lanes[number(e.lane)];
+                       lane.moved = false;
+                       lane.settled = e.settlement;
+                   },
+                   [&](const LaneFinished& e) { lanes[number(e.lane)].finished = e; },
+                   [&](const RunResumed&) {
+                       ended.reset();
+                       ++resumptions;
+                   },
+                   [&](const RunEnded& e) {
+                       ended = e;
+                       wall_s += e.wall_s;
+                       link.frames += e.link.frames;
+                       link.bad_frames += e.link.bad_frames;
+                       link.retries += e.link.retries;
+                       link.reconnects += e.link.reconnects;
+                       link.resets += e.link.resets;
+                   },
+                   [&](const CodesWritten& e) {
+                       LaneState& lane = lanes[number(e.lane)];
+                       lane.last_written = e.codes;
+                       lane.moved = false;
+                   },
+               },
+               stored.event);
 }
 
 bool RunState::complete(const std::vector<std::uint16_t>& run_lanes) const {

@@ -119,7 +119,8 @@ Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
         bench.say("resuming run " + run + "; --new starts another");
         first.push_back(RunResumed{::getpid(), "resumed by " + host_name()});
     } else {
-        if (auto added = co_await store.add_run(beginning.manifest); !added) co_return added.error();
+        if (auto added = co_await store.add_run(beginning.manifest); !added)
+            co_return added.error();
         bench.say("run " + run);
         first.push_back(Identified{*identity});
     }

@@ -8,9 +8,13 @@
 
 namespace lanewright {
 
-std::string program_version() { return LANEWRIGHT_VERSION; }
+std::string program_version() {
+    return LANEWRIGHT_VERSION;
+}
 
-std::string git_hash() { return LANEWRIGHT_GIT_HASH; }
+std::string git_hash() {
+    return LANEWRIGHT_GIT_HASH;
+}
 
 std::string build_description() {
     return "g++ " __VERSION__ ", " LANEWRIGHT_BUILD_TYPE;

@@ -43,9 +43,9 @@ class Database {
     Database(const Database&) = delete;
     Database& operator=(const Database&) = delete;
 
-    void add_run(const Manifest& manifest);                // durable on return
-    void append(const std::vector<NewEvent*>& events);     // one transaction, durable on return
-    std::vector<RunRow> runs() const;                      // oldest first
+    void add_run(const Manifest& manifest);             // durable on return
+    void append(const std::vector<NewEvent*>& events);  // one transaction, durable on return
+    std::vector<RunRow> runs() const;                   // oldest first
     // A whole id, a prefix of just one id, or "latest". StoreError says which runs there are.
     RunRow find_run(const std::string& id_or_prefix) const;
     std::vector<StoredEvent> events(const RunId& run, EventSeq after, std::size_t at_most) const;

@@ -12,13 +12,12 @@ using nlohmann::json;
 
 namespace {
 
-constexpr auto stage_words =
-    words<Stage>({{Stage::search, "search"}, {Stage::compare, "compare"}});
-constexpr auto settlement_words = words<Settlement>(
-    {{Settlement::decided, "decided"}, {Settlement::restored, "restored"}});
+constexpr auto stage_words = words<Stage>({{Stage::search, "search"}, {Stage::compare, "compare"}});
+constexpr auto settlement_words =
+    words<Settlement>({{Settlement::decided, "decided"}, {Settlement::restored, "restored"}});
 constexpr auto outcome_words = words<LaneOutcome>({{LaneOutcome::tuned, "tuned"},
-                                               {LaneOutcome::unchanged, "unchanged"},
-                                               {LaneOutcome::failed, "failed"}});
+                                                   {LaneOutcome::unchanged, "unchanged"},
+                                                   {LaneOutcome::failed, "failed"}});
 constexpr auto ending_words = words<Ending>({{Ending::complete, "complete"},
                                              {Ending::stopped, "stopped"},
                                              {Ending::wall_limit, "wall_limit"},
@@ -33,9 +32,13 @@ constexpr auto definition_words = words<ErrorDefinition>(
 constexpr auto basis_words =
     words<Basis>({{Basis::counted, "counted"}, {Basis::extrapolated, "extrapolated"}});
 
-json lane_json(Lane lane) { return json{{"lane", number(lane)}}; }
+json lane_json(Lane lane) {
+    return json{{"lane", number(lane)}};
+}
 
-Lane lane_from(const json& body) { return Lane{body.at("lane").get<std::uint16_t>()}; }
+Lane lane_from(const json& body) {
+    return Lane{body.at("lane").get<std::uint16_t>()};
+}
 
 template <class T>
 json reading_key(const T& event) {
@@ -64,11 +67,9 @@ const T& as(const Event& event) {
 }
 
 const Codec codecs[] = {
-    {"identified",
-     [](const Event& e) { return to_json_value(as<Identified>(e).identity); },
+    {"identified", [](const Event& e) { return to_json_value(as<Identified>(e).identity); },
      [](const json& b) -> Event { return Identified{identity_from(b)}; }},
-    {"lane_saved",
-     [](const Event& e) { return to_json_value(as<LaneSaved>(e).saved); },
+    {"lane_saved", [](const Event& e) { return to_json_value(as<LaneSaved>(e).saved); },
      [](const json& b) -> Event { return LaneSaved{saved_lane_from(b)}; }},
     {"intent",
      [](const Event& e) {
@@ -83,8 +84,7 @@ const Codec codecs[] = {
          event.request = request_from(b.at("request"));
          return event;
      }},
-    {"reading",
-     [](const Event& e) { return reading_key(as<ReadingTaken>(e)); },
+    {"reading", [](const Event& e) { return reading_key(as<ReadingTaken>(e)); },
      [](const json& b) -> Event { return with_reading_key<ReadingTaken>(b); }},
     {"reading_void",
      [](const Event& e) {
@@ -175,7 +175,9 @@ static_assert(std::size(codecs) == std::variant_size_v<Event>, "one codec an eve
 
 }  // namespace
 
-const char* kind_of(const Event& event) { return codecs[event.index()].kind; }
+const char* kind_of(const Event& event) {
+    return codecs[event.index()].kind;
+}
 
 std::optional<Lane> lane_of(const Event& event) {
     return std::visit(
@@ -193,8 +195,7 @@ std::optional<Lane> lane_of(const Event& event) {
 
 std::string encode_body(const Event& event) {
     // Board text can hold any byte; it must not stop a run from being stored.
-    return codecs[event.index()].encode(event).dump(-1, ' ', false,
-                                                    json::error_handler_t::replace);
+    return codecs[event.index()].encode(event).dump(-1, ' ', false, json::error_handler_t::replace);
 }
 
 Event decode_body(const std::string& kind, const std::string& body) {
@@ -207,21 +208,39 @@ Event decode_body(const std::string& kind, const std::string& body) {
         }
     }
     throw BadStoreData("the store holds an event of kind \"" + kind +
-                     "\", which this version does not know");
+                       "\", which this version does not know");
 }
 
-const char* name_of(Stage stage) { return stage_words.name(stage); }
-const char* name_of(Settlement settlement) { return settlement_words.name(settlement); }
-const char* name_of(LaneOutcome outcome) { return outcome_words.name(outcome); }
-const char* name_of(Ending ending) { return ending_words.name(ending); }
-const char* name_of(Status status) { return status_words.name(status); }
-const char* name_of(ErrorDefinition definition) { return definition_words.name(definition); }
-const char* name_of(Basis basis) { return basis_words.name(basis); }
+const char* name_of(Stage stage) {
+    return stage_words.name(stage);
+}
+const char* name_of(Settlement settlement) {
+    return settlement_words.name(settlement);
+}
+const char* name_of(LaneOutcome outcome) {
+    return outcome_words.name(outcome);
+}
+const char* name_of(Ending ending) {
+    return ending_words.name(ending);
+}
+const char* name_of(Status status) {
+    return status_words.name(status);
+}
+const char* name_of(ErrorDefinition definition) {
+    return definition_words.name(definition);
+}
+const char* name_of(Basis basis) {
+    return basis_words.name(basis);
+}
 
-Status status_from(const std::string& word) { return status_words.value(word); }
+Status status_from(const std::string& word) {
+    return status_words.value(word);
+}
 ErrorDefinition error_definition_from(const std::string& word) {
     return definition_words.value(word);
 }
-Basis basis_from(const std::string& word) { return basis_words.value(word); }
+Basis basis_from(const std::string& word) {
+    return basis_words.value(word);
+}
 
 }  // namespace lanewright

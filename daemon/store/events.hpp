@@ -16,16 +16,16 @@
 
 namespace lanewright {
 
-using RunId = std::string;         // unique across benches: time and 32 random bits
-using EventSeq = std::int64_t;     // row number in its store
+using RunId = std::string;      // unique across benches: time and 32 random bits
+using EventSeq = std::int64_t;  // row number in its store
 
 // Which part of a lane's job a reading belongs to.
 enum class Stage : std::uint8_t { search, compare };
 
 // What the chip's codes were set to for good, and why.
 enum class Settlement : std::uint8_t {
-    decided,   // the decided codes, left in place
-    restored   // the codes found before the run
+    decided,  // the decided codes, left in place
+    restored  // the codes found before the run
 };
 
 enum class LaneOutcome : std::uint8_t { tuned, unchanged, failed };

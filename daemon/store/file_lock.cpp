@@ -18,8 +18,8 @@ Fault fault_from_errno(const std::string& path, const std::string& what) {
     const int error = errno;
     Fault fault;
     fault.cause = error == EACCES || error == EPERM ? Cause::no_permission : Cause::io;
-    fault.what = "the lock of " + what + " at " + path + " cannot be taken: " +
-                 std::strerror(error);
+    fault.what =
+        "the lock of " + what + " at " + path + " cannot be taken: " + std::strerror(error);
     return fault;
 }
 
@@ -36,8 +36,7 @@ int open_or_create(const std::string& path) {
 
 }  // namespace
 
-FileLock::FileLock(FileLock&& other) noexcept
-    : descriptor_(std::exchange(other.descriptor_, -1)) {}
+FileLock::FileLock(FileLock&& other) noexcept : descriptor_(std::exchange(other.descriptor_, -1)) {}
 
 FileLock& FileLock::operator=(FileLock&& other) noexcept {
     std::swap(descriptor_, other.descriptor_);

@@ -26,14 +26,14 @@ struct Manifest {
     std::string version, git_hash, build, cpu, host;
     std::int64_t pid = 0;
     SourceFile board_file, recipe_file;
-    std::string board, recipe;    // their names
-    std::string link;             // tcp:HOST:PORT or serial:PATH
+    std::string board, recipe;  // their names
+    std::string link;           // tcp:HOST:PORT or serial:PATH
     Identity identity;
-    std::vector<std::uint16_t> lanes;                // in ascending order
-    std::vector<std::vector<std::uint16_t>> waves;   // lanes that run together, in order
+    std::vector<std::uint16_t> lanes;               // in ascending order
+    std::vector<std::vector<std::uint16_t>> waves;  // lanes that run together, in order
     std::uint64_t seed = 0;
     std::map<std::string, std::string> tags;
-    std::string condition;        // empty: as found
+    std::string condition;  // empty: as found
 };
 
 // UTC now and the local offset, for the manifest and for stamps.

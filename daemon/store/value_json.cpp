@@ -15,7 +15,9 @@ constexpr auto role_words = words<Role>({{Role::none, "none"},
                                          {Role::control, "control"},
                                          {Role::scratch, "scratch"}});
 
-json look_json(const Look& look) { return json::array({look.phase_ui, look.offset_mv, look.bits}); }
+json look_json(const Look& look) {
+    return json::array({look.phase_ui, look.offset_mv, look.bits});
+}
 
 Look look_from(const json& value) {
     return {value.at(0).get<double>(), value.at(1).get<double>(), value.at(2).get<std::uint64_t>()};
@@ -23,9 +25,13 @@ Look look_from(const json& value) {
 
 }  // namespace
 
-json to_json_value(const Codes& codes) { return json(codes.value); }
+json to_json_value(const Codes& codes) {
+    return json(codes.value);
+}
 
-Codes codes_from(const json& value) { return {value.get<std::vector<std::int32_t>>()}; }
+Codes codes_from(const json& value) {
+    return {value.get<std::vector<std::int32_t>>()};
+}
 
 json to_json_value(const Request& request) {
     json out{{"codes", to_json_value(request.codes)},
@@ -140,8 +146,8 @@ json to_json_value(const std::vector<Count>& counts) {
 std::vector<Count> counts_from(const json& value) {
     std::vector<Count> out;
     for (const json& entry : value) {
-        out.push_back({look_from(entry.at(0)), entry.at(1).get<std::uint64_t>(),
-                       entry.at(2).get<bool>()});
+        out.push_back(
+            {look_from(entry.at(0)), entry.at(1).get<std::uint64_t>(), entry.at(2).get<bool>()});
     }
     return out;
 }

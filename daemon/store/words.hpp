@@ -26,7 +26,7 @@ struct Words {
             if (text == word) return entry;
         }
         throw BadStoreData("the store holds the word \"" + std::string(text) +
-                         "\", which this version does not know");
+                           "\", which this version does not know");
     }
 };
 

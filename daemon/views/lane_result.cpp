@@ -18,8 +18,8 @@ T decoded(const SourceFile& file, const Decode& decode) {
         out = decode(*document, complaints);
     }
     if (!out || complaints.any()) {
-        throw BadStoreData("the run's copy of " + file.path +
-                         " cannot be read by this version:\n" + complaints.text());
+        throw BadStoreData("the run's copy of " + file.path + " cannot be read by this version:\n" +
+                           complaints.text());
     }
     return std::move(*out);
 }

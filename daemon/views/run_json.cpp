@@ -12,7 +12,9 @@ using json = nlohmann::ordered_json;
 namespace {
 
 // JSON has no infinity: a limit that is not known is null.
-json number_or_null(double value) { return std::isfinite(value) ? json(value) : json(nullptr); }
+json number_or_null(double value) {
+    return std::isfinite(value) ? json(value) : json(nullptr);
+}
 
 json value_of(const std::optional<Measured>& measured) {
     return measured ? number_or_null(measured->value) : json(nullptr);
@@ -56,9 +58,9 @@ json margin_json(const std::optional<Margin>& margin) {
 
 json response_json(const std::optional<Response>& response) {
     if (!response) return nullptr;
-    return {{"dc_db", response->dc_db},         {"hf_db", response->hf_db},
+    return {{"dc_db", response->dc_db},           {"hf_db", response->hf_db},
             {"peaking_db", response->peaking_db}, {"zero_ghz", response->zero_ghz},
-            {"pole_ghz", response->pole_ghz},   {"level_ohm", response->level_ohm}};
+            {"pole_ghz", response->pole_ghz},     {"level_ohm", response->level_ohm}};
 }
 
 json codes_or_null(const CodeSpace& space, const std::optional<Codes>& codes) {
