@@ -35,6 +35,7 @@ class Descent {
         std::size_t level = 0;
         for (;;) {
             if (!descend_from(level)) return question_;
+            question_.settled = true;
             const Codes before = here_;
             if (!try_oblique()) return question_;
             if (here_ == before) return {};

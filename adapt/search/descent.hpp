@@ -26,6 +26,7 @@ namespace lanewright {
 struct Question {
     std::vector<Codes> wanted;  // not read yet; empty: finished
     std::string why;
+    bool settled = false;  // a local optimum along the axes was reached: what follows is a bonus
 };
 
 // What a descent from `start` wants read next. `start` must be in the ledger. `oblique` steps are

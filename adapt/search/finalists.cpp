@@ -170,9 +170,8 @@ Choice choose(const LaneProblem& problem, const Ledger& ledger) {
     if (present.score.status == Status::no_lock || present.score.bound == Bound::at_most) {
         return {best.codes, false, "open, where the present codes are not: " + both};
     }
-    const std::string by = std::isfinite(z)
-                               ? " by " + fixed(z, 1) + " standard errors: "
-                               : std::string(", and no spread is known: ");
+    const std::string by = std::isfinite(z) ? " by " + fixed(z, 1) + " standard errors: "
+                                            : std::string(", and no spread is known: ");
     return {best.codes, false, "better than the present codes" + by + both};
 }
 

@@ -66,6 +66,7 @@ StagedSearch::Plan StagedSearch::plan() const {
     if (!scanned.start) return finals(false);
     Question question = search(*scanned.start);
     if (question.wanted.empty()) return finals(false);
+    if (question.settled && search_room() == 0) return finals(false);
     return trimmed(std::move(question.wanted), std::move(question.why), "search");
 }
 

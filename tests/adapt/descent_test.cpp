@@ -121,6 +121,45 @@ TEST_CASE("steps along the axes stall in a curved valley") {
     CHECK(value_at(brute_force(space, bench, problem.required)) < 1e-9);
 }
 
+TEST_CASE("a ridge between the axes is followed where single steps only lead down") {
+    // Along the ridge both codes rise together; every single step leaves it.
+    const auto space = plain_space({33, 33});
+    BenchOfOne bench;
+    bench.quantised = false;
+    bench.truth = [](const Codes& codes) {
+        const double off = std::abs(codes.value[0] - codes.value[1]);
+        const double along = std::abs(codes.value[0] + codes.value[1] - 50);
+        const double half = 60 - 4 * off - along / 2;
+        return Truth{half, half, 0.5, 0.5, true};
+    };
+    const auto problem = problem_on(space, {{16, 16}});
+    const auto outcome = run_strategy("descent", problem, bench);
+    CHECK(outcome.decision.codes == Codes{{25, 25}});
+    CHECK(outcome.asked.size() < 120);
+    // Each of the four codes beside the start is worse than it.
+    for (const auto& beside :
+         {Codes{{15, 16}}, Codes{{17, 16}}, Codes{{16, 15}}, Codes{{16, 17}}}) {
+        CHECK(bench.truth(beside).up_mv < bench.truth(problem.present).up_mv);
+    }
+}
+
+TEST_CASE("a budget that only cuts the steps beyond the local optimum is not reported as short") {
+    const auto space = plain_space({33, 33});
+    BenchOfOne bench;
+    bench.truth = [&](const Codes& codes) { return cone(space, codes, {{20, 9}}, 100, 0.6, 0.3); };
+    const auto through = run_strategy("descent", problem_on(space, {{16, 16}}), bench);
+    const auto searched = static_cast<double>(through.asked.size());
+    const auto notes_with = [&](double readings) {
+        const auto outcome =
+            run_strategy("descent", problem_on(space, {{16, 16}}, readings), bench);
+        return std::any_of(
+            outcome.decision.notes.begin(), outcome.decision.notes.end(),
+            [](const std::string& note) { return note.find("budget ended") != std::string::npos; });
+    };
+    CHECK(notes_with(14));
+    CHECK_FALSE(notes_with(searched - 1));
+}
+
 TEST_CASE("descent reads no codes twice before its finalists") {
     const auto space = equalizer_space();
     BenchOfOne bench;

@@ -197,3 +197,19 @@ TEST_CASE("a grid takes every stride-th code and is thinned to what the budget h
     CHECK(make_grid(space, 0, 0).size() == 1);
     CHECK(make_grid(CodeSpace(), 1, 10).size() == 0);
 }
+
+TEST_CASE("pair steps move two codes at once, inside the range and past forbidden combinations") {
+    const auto space = plain_space({9, 1, 17}, {{{{0, 5, 5}, {2, 9, 9}}, "unstable"}});
+    const auto moves = make_pair_moves(space);
+    REQUIRE(moves->axes() == 2);  // the one-code dimension takes no part
+    CHECK(moves->axis_name(0) == "a against c");
+    CHECK(moves->axis_name(1) == "a and c");
+    const auto last = moves->levels() - 1;
+    const Codes middle{{4, 0, 8}};
+    CHECK(moves->step(middle, 0, +1, last) == Codes{{5, 0, 7}});
+    CHECK(moves->step(middle, 0, -1, last) == Codes{{3, 0, 9}});
+    CHECK(moves->step(middle, 1, -1, last) == Codes{{3, 0, 7}});
+    CHECK(moves->step(middle, 1, +1, last) == std::nullopt);            // forbidden
+    CHECK(moves->step(Codes{{8, 0, 8}}, 1, +1, last) == std::nullopt);  // no code above
+    CHECK(moves->step(middle, 1, +1, 0) == Codes{{6, 0, 12}});
+}

@@ -295,10 +295,55 @@ TEST_CASE("the decision rests on repeated readings of the finalists") {
     CHECK(procedure->phase() == "finished");
     CHECK(std::count(outcome.asked.begin(), outcome.asked.end(), outcome.decision.codes) == 4);
     CHECK(std::count(outcome.asked.begin(), outcome.asked.end(), problem.present) == 4);
-    CHECK(outcome.decision.reason.find("mean of 3 repeated readings") != std::string::npos);
+    CHECK(outcome.decision.reason.find("3 readings each") != std::string::npos);
     CHECK(finalist_share(60) == 12);
     CHECK(finalist_share(7) == 0);
     CHECK(finalist_share(8) == 2);
+}
+
+TEST_CASE("a reason names closed eyes and open limits in words, never as infinities") {
+    const auto space = plain_space({17, 17});
+    auto problem = problem_on(space, {{1, 16}}, 60);
+    const auto reason_on = [&](const Truth& present, const Truth& others) {
+        BenchOfOne bench;
+        bench.truth = [&](const Codes& codes) {
+            return codes == problem.present ? present : others;
+        };
+        return run(*make(*find_strategy("descent"), problem), problem, bench).decision.reason;
+    };
+    const Truth open{30, 30, 0.3, 0.3, true}, closed{-5, -5, 0, 0, true},
+        wide{900, 900, 2, 2, true};
+    CHECK(reason_on(closed, open).find("against closed") != std::string::npos);
+    CHECK(reason_on({0, 0, 0, 0, false}, open).find("against no lock") != std::string::npos);
+    CHECK(reason_on(open, wide).find("at least") != std::string::npos);
+    CHECK(reason_on(wide, open).find("present codes are the best") != std::string::npos);
+    for (const auto& present : {open, closed, wide}) {
+        for (const auto& others : {open, closed, wide}) {
+            const std::string reason = reason_on(present, others);
+            INFO(reason);
+            CHECK(reason.find("inf") == std::string::npos);
+            CHECK(reason.find("nan") == std::string::npos);
+            CHECK(reason.size() < 160);
+        }
+    }
+}
+
+TEST_CASE("with the present codes closed a fourth set of codes takes their seat") {
+    const auto space = plain_space({9});
+    const auto problem = problem_on(space, {{0}}, 60);
+    Ledger ledger(problem);
+    BenchOfOne bench;
+    bench.truth = [&](const Codes& codes) {
+        return codes == problem.present ? Truth{-5, -5, 0, 0, true}
+                                        : cone(space, codes, {{6}}, 100, 0.6, 0.5);
+    };
+    for (int code = 0; code < 9; ++code) {
+        ledger.add({{code}}, bench.read({{{code}}, {}, problem.reading, ""}));
+    }
+    const auto batch = next_finalists(problem, ledger, 12);
+    CHECK(batch.size() == 4);
+    CHECK(std::count(batch.begin(), batch.end(), problem.present) == 0);
+    CHECK(next_finalists(problem, ledger, 3).size() == 3);
 }
 
 TEST_CASE("finalists are read forwards and backwards in turn, so that drift cancels") {

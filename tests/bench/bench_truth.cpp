@@ -22,8 +22,7 @@ constexpr std::size_t sample_stride = 61;  // no multiple of any bank's code cou
 
 sim::TargetFile demo_target() {
     Complaints complaints;
-    auto target =
-        sim::load_target(LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json", complaints);
+    auto target = sim::load_target(LANEWRIGHT_SOURCE_DIR "/configs/targets/demo.json", complaints);
     if (!target) throw std::runtime_error(complaints.text());
     return std::move(*target);
 }
@@ -89,9 +88,9 @@ void measure_whole_lane(Rows& rows, const sim::TargetFile& target, int lane) {
     sim::CodesScore quick;
     const double all_s = seconds_of([&] { all = all_codes(oracle, target.required, threads); });
     const double best_s = seconds_of([&] { quick = best_codes(oracle, target.required, threads); });
-    const auto best =
-        std::max_element(all.begin(), all.end(),
-                         [](const auto& one, const auto& other) { return one.score < other.score; });
+    const auto best = std::max_element(
+        all.begin(), all.end(),
+        [](const auto& one, const auto& other) { return one.score < other.score; });
     const std::string suffix = ".lane" + std::to_string(lane);
     const auto row = [&](const std::string& name, double value, const char* unit, Better better,
                          std::optional<double> must, std::optional<double> aim) {

@@ -23,7 +23,7 @@ struct Row {
     Better better = Better::less;
     std::optional<double> must = std::nullopt;  // missed: reported as MISSED
     std::optional<double> aim = std::nullopt;   // what would be good
-    std::uint64_t n = 1;         // how often measured, or over how many cases
+    std::uint64_t n = 1;                        // how often measured, or over how many cases
     std::uint64_t seed = 0;
 };
 

@@ -22,12 +22,8 @@ File usable(std::optional<File> file, const Complaints& complaints) {
 
 MonitorGrid monitor_grid_of(const BoardFile& board) {
     const MonitorDescription& monitor = board.monitor;
-    return {monitor.height.size,
-            monitor.width.size,
-            monitor.height.most_steps,
-            monitor.width.most_steps,
-            monitor.height.sigma,
-            monitor.width.sigma};
+    return {monitor.height.size,      monitor.width.size,   monitor.height.most_steps,
+            monitor.width.most_steps, monitor.height.sigma, monitor.width.sigma};
 }
 
 }  // namespace
@@ -78,10 +74,9 @@ Reading TruthLane::read(const Request& request, std::uint64_t seed, std::uint32_
     const sim::LatchedEdges steps =
         sim::latched_reading(oracle_, target_order(request.codes), wanted.error_ratio,
                              wanted.dwell_bits, seed, oracle_.lane(), ordinal);
-    Reading reading =
-        latched_reading(monitor_grid_of(files_.board),
-                        LatchedEdges{steps.up, steps.down, steps.left, steps.right, steps.locked},
-                        wanted);
+    Reading reading = latched_reading(
+        monitor_grid_of(files_.board),
+        LatchedEdges{steps.up, steps.down, steps.left, steps.right, steps.locked}, wanted);
     reading.codes = request.codes;
     reading.condition = request.condition;
     reading.error_definition = files_.board.monitor.error_definition == "decision"

@@ -54,7 +54,7 @@ class TruthLane {
 
 struct SearchResult {
     Decision decision;
-    double attainment = 0;  // true score of the decided codes over that of the best
+    double attainment = 0;    // true score of the decided codes over that of the best
     bool impossible = false;  // better than the oracle's best by more than its own tolerance
 };
 
