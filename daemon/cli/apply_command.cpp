@@ -39,36 +39,37 @@ RestoreNote note_for(const RunView& view, bool former) {
     return note;
 }
 
-Task<void> apply_at_hand(const BoardAtHand& at_hand, RestoreNote note, Store& store,
-                         Workers& workers, TimeSource& time, Stop stop, bool former) {
-    auto board = co_await reach(at_hand.file, time);
+Task<void> apply_on(Bench bench, RestoreNote note, const Endpoint* endpoint, Store* store,
+                    bool former) {
+    auto identity = co_await bench.reader.identify();
+    if (!identity) co_return identity.error();
+    if (auto mended = co_await mend_endpoint(*identity, bench, store); !mended) {
+        co_return mended.error();
+    }
+    // The note stands while lanes are written, so that an interrupted apply is finished later.
+    note.endpoint = endpoint->name();
+    note.store = store->path();
+    if (same_board(note.identity, *identity)) {
+        if (auto noted = write_note(bench.note_path, note); !noted) co_return noted.error();
+    }
+    std::string why = former ? "apply --former" : "apply";
+    auto settling = settle_note(std::move(note), *identity, bench, true, std::move(why));
+    co_return co_await std::move(settling);
+}
+
+Task<void> apply_at_hand(const BoardAtHand* at_hand, RestoreNote note, Store* store,
+                         Workers* workers, TimeSource* time, Stop stop, bool former) {
+    auto board = co_await reach(at_hand->file, time);
     if (!board) co_return board.error();
     std::function<LinkCounts()> counts = [] { return LinkCounts{}; };
     std::function<void(const std::string&)> say = [](const std::string& text) {
         print_error("lanewright: " + text);
     };
-    Bench bench{(*board)->lanes(),
-                store,
-                workers,
-                time,
-                stop,
-                at_hand.endpoint.note_path(),
-                {},
-                counts,
-                say};
-    auto identity = co_await (*board)->lanes().identify();
-    if (!identity) co_return identity.error();
-    if (auto mended = co_await mend_endpoint(*identity, bench, &store); !mended) {
-        co_return mended.error();
-    }
-    // The note stands while lanes are written, so that an interrupted apply is finished later.
-    note.endpoint = at_hand.endpoint.name();
-    note.store = store.path();
-    if (same_board(note.identity, *identity)) {
-        if (auto noted = write_note(bench.note_path, note); !noted) co_return noted.error();
-    }
-    auto written = co_await settle_note(std::move(note), *identity, bench, true,
-                                        former ? "apply --former" : "apply");
+    const Endpoint& endpoint = at_hand->endpoint;
+    Bench bench{(*board)->lanes(),    *store, *workers, *time, stop,
+                endpoint.note_path(), {},     counts,   say};
+    auto applying = apply_on(std::move(bench), std::move(note), &endpoint, store, former);
+    auto written = co_await std::move(applying);
     auto closed = co_await (*board)->close();
     if (written && !closed) co_return closed.error();
     co_return written;
@@ -123,7 +124,7 @@ int apply(const ApplyOptions& options) {
     if (!store) return report(store.error(), options.json);
     Workers workers(time, 1);
     auto applied = run_until_done(
-        time, apply_at_hand(*at_hand, note, **store, workers, time, stop, options.former));
+        time, apply_at_hand(&*at_hand, note, store->get(), &workers, &time, stop, options.former));
     if (!applied) return report(applied.error(), options.json);
     report_applied(*view, note, options.json);
     return exit_ok;

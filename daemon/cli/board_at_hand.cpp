@@ -45,9 +45,9 @@ Result<BoardAtHand> take_board(const std::string& board_path, const std::string&
     return out;
 }
 
-Task<std::unique_ptr<Board>> reach(BoardFile file, TimeSource& time) {
-    auto link = make_link(time, file.link);
-    auto board = co_await open_board(std::move(file), std::move(link), time);
+Task<std::unique_ptr<Board>> reach(BoardFile file, TimeSource* time) {
+    auto link = make_link(*time, file.link);
+    auto board = co_await open_board(std::move(file), std::move(link), *time);
     if (board) {
         for (const std::string& warning : (*board)->session().link_traits().warnings) {
             print_error("lanewright: " + warning);

@@ -25,7 +25,7 @@ Fault fault_of(const Complaints& complaints);
 Result<BoardAtHand> take_board(const std::string& board_path, const std::string& link);
 
 // Opens the board with its file's link; the link's warnings go to stderr.
-Task<std::unique_ptr<Board>> reach(BoardFile file, TimeSource& time);
+Task<std::unique_ptr<Board>> reach(BoardFile file, TimeSource* time);
 
 // Wire statistics as a run keeps them.
 LinkCounts counts_of(const Board& board);

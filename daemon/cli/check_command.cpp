@@ -24,8 +24,8 @@ double bin_end_ms(std::size_t bin) {
     return std::ldexp(1e-3, static_cast<int>(bin));
 }
 
-Task<CheckReport> check_at_hand(const BoardAtHand& at_hand, TimeSource& time) {
-    auto board = co_await reach(at_hand.file, time);
+Task<CheckReport> check_at_hand(const BoardAtHand* at_hand, TimeSource* time) {
+    auto board = co_await reach(at_hand->file, time);
     if (!board) co_return board.error();
     auto checked = co_await check_board(**board);
     auto closed = co_await (*board)->close();
@@ -122,7 +122,7 @@ int run_check(const CheckOptions& options) {
     const std::string pending = *note ? at_hand->endpoint.note_path() : std::string();
     boost::asio::io_context io;
     SteadyTimeSource time(io);
-    auto checked = run_until_done(time, check_at_hand(*at_hand, time));
+    auto checked = run_until_done(time, check_at_hand(&*at_hand, &time));
     if (!checked) return report(checked.error(), options.json);
     if (options.json) {
         print(report_json(*checked, at_hand->file, pending).dump(2) + "\n");

@@ -27,23 +27,28 @@ struct Preview {
     std::string pending_note;
 };
 
-Task<Preview> preview(const BoardAtHand& at_hand, const TuneRequest& request, TimeSource& time) {
+Task<Preview> preview_of(LaneReader* lanes, const TuneRequest* request) {
     Preview out;
-    auto board = co_await reach(at_hand.file, time);
-    if (!board) co_return board.error();
-    auto identity = co_await (*board)->lanes().identify();
+    auto identity = co_await lanes->identify();
     if (!identity) co_return identity.error();
     out.identity = std::move(*identity);
-    for (const std::uint16_t lane : request.lanes) {
-        auto saved = co_await (*board)->lanes().save(Lane{lane});
+    for (const std::uint16_t lane : request->lanes) {
+        auto saved = co_await lanes->save(Lane{lane});
         if (!saved) co_return saved.error();
         LanePreview entry;
         entry.saved = std::move(*saved);
         out.lanes.push_back(std::move(entry));
     }
-    auto closed = co_await (*board)->close();
-    if (!closed) co_return closed.error();
     co_return out;
+}
+
+Task<Preview> preview(const BoardAtHand* at_hand, const TuneRequest* request, TimeSource* time) {
+    auto board = co_await reach(at_hand->file, time);
+    if (!board) co_return board.error();
+    auto seen = co_await preview_of(&(*board)->lanes(), request);
+    auto closed = co_await (*board)->close();
+    if (seen && !closed) co_return closed.error();
+    co_return seen;
 }
 
 // The first batch as the strategy would propose it from the present codes, and what the lane may
@@ -156,7 +161,7 @@ void print_preview(const Preview& preview, const TuneRequest& request) {
 
 int dry_run(const BoardAtHand& at_hand, const TuneRequest& request, TimeSource& time,
             bool as_json) {
-    auto seen = run_until_done(time, preview(at_hand, request, time));
+    auto seen = run_until_done(time, preview(&at_hand, &request, &time));
     if (!seen) return report(seen.error(), as_json);
     auto note = read_note(at_hand.endpoint.note_path());
     if (!note) return report(note.error(), as_json);

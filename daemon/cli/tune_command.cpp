@@ -52,8 +52,9 @@ std::map<std::string, std::string> tags_of(const std::vector<std::string>& words
 void require_tags(const Recipe& recipe, const std::map<std::string, std::string>& tags) {
     for (const std::string& key : recipe.required_tags) {
         if (!tags.contains(key)) {
-            throw UsageError("the recipe " + recipe.path + " requires the tag \"" + key +
-                             "\"; give it as --tag " + key + "=VALUE");
+            std::string text = "the recipe " + recipe.path + " requires the tag \"";
+            text.append(key).append("\"; give it as --tag ").append(key).append("=VALUE");
+            throw UsageError(text);
         }
     }
 }
@@ -122,18 +123,18 @@ void say(const std::string& text) {
     print_error("lanewright: " + text);
 }
 
-Task<TuneOutcome> tune_at_hand(TuneJob& job, Store& store, Workers& workers, TimeSource& time,
-                               Stop stop, Progress& progress, RunId& began) {
-    auto board = co_await reach(job.at_hand.file, time);
+Task<TuneOutcome> tune_at_hand(TuneJob* job, Store* store, Workers* workers, TimeSource* time,
+                               Stop stop, Progress* progress, RunId* began) {
+    auto board = co_await reach(job->at_hand.file, time);
     if (!board) co_return board.error();
     std::function<LinkCounts()> counts = [&board] { return counts_of(**board); };
-    std::function<void(const std::string&)> tell = [&progress](const std::string& text) {
-        progress.interject("lanewright: " + text);
+    std::function<void(const std::string&)> tell = [progress](const std::string& text) {
+        progress->interject("lanewright: " + text);
     };
-    Bench bench{(*board)->lanes(), store,  workers, time, stop, job.at_hand.endpoint.note_path(),
-                {&progress},       counts, tell};
-    auto outcome =
-        co_await tune_board(job.request, std::move(bench), store, job.at_hand.endpoint, &began);
+    const Endpoint& endpoint = job->at_hand.endpoint;
+    Bench bench{(*board)->lanes(),    *store,     *workers, *time, stop,
+                endpoint.note_path(), {progress}, counts,   tell};
+    auto outcome = co_await tune_board(job->request, std::move(bench), store, &endpoint, began);
     auto closed = co_await (*board)->close();
     if (outcome && !closed) co_return closed.error();
     co_return outcome;
@@ -181,8 +182,8 @@ int tune(const TuneOptions& options) {
     Workers workers(time, options.threads);
     Progress progress(progress_plan(job->request), is_terminal(STDERR_FILENO));
     RunId run;
-    auto outcome =
-        run_until_done(time, tune_at_hand(*job, **store, workers, time, stop, progress, run));
+    auto outcome = run_until_done(
+        time, tune_at_hand(&*job, store->get(), &workers, &time, stop, &progress, &run));
     progress.finish();
     if (!outcome) return report_run_fault(outcome.error(), run, options.json);
     const Database database(path, Database::Mode::read_only);

@@ -235,9 +235,16 @@ Task<void> Engine::settle(Lane lane, Settlement settlement, Codes codes) {
         auto written = co_await bench_.reader.restore(lane, wanted);
         if (written) {
             state_.lanes[number(lane)].moved = false;
+            const std::uint64_t resets_before = resets_known_;
             auto storing = append(LaneSettled{lane, settlement, std::move(*written)});
             auto stored = co_await std::move(storing);
-            plan_.note.drop(lane);
+            if (resets_known_ != resets_before) {
+                // Another lane met a reset while this one's row was being stored: the codes are
+                // gone again, and settle_rest writes them.
+                state_.lanes[number(lane)].moved = true;
+            } else {
+                plan_.note.drop(lane);
+            }
             if (auto noted = note_changed(); !noted) co_return noted.error();
             if (!stored) co_return stored.error();
             co_return Result<void>{};

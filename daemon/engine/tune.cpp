@@ -60,7 +60,8 @@ struct Beginning {
     bool resumed = false;
 };
 
-// The newest run of the same job that did not come to its end, or a new one.
+// The newest run of the same job that did not come to its end, or a new one. One whose lanes are all
+// finished but whose end was not stored is closed by resuming it.
 Beginning beginning_of(const TuneRequest& request, const Identity& identity, const Store& store) {
     Beginning out;
     out.manifest = manifest_of(request, identity);
@@ -69,7 +70,8 @@ Beginning beginning_of(const TuneRequest& request, const Identity& identity, con
     for (auto row = rows.rbegin(); row != rows.rend(); ++row) {
         if (!same_job(row->manifest, out.manifest)) continue;
         std::vector<StoredEvent> history = store.events(row->id);
-        if (fold(history).complete(row->manifest.lanes)) return out;
+        const RunState state = fold(history);
+        if (state.ended && state.ended->ending == Ending::complete) return out;
         return {row->manifest, std::move(history), true};
     }
     return out;
@@ -104,14 +106,14 @@ Task<void> mend_endpoint(Identity present, Bench bench, Store* store) {
     co_return fault;
 }
 
-Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
-                             const Endpoint& endpoint, RunId* began) {
+Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store,
+                             const Endpoint* endpoint, RunId* began) {
     auto identity = co_await bench.reader.identify();
     if (!identity) co_return identity.error();
-    if (auto mended = co_await mend_endpoint(*identity, bench, &store); !mended) {
+    if (auto mended = co_await mend_endpoint(*identity, bench, store); !mended) {
         co_return mended.error();
     }
-    Beginning beginning = beginning_of(request, *identity, store);
+    Beginning beginning = beginning_of(request, *identity, *store);
     const RunId run = beginning.manifest.run;
     *began = run;
     std::vector<Event> first;
@@ -119,7 +121,7 @@ Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
         bench.say("resuming run " + run + "; --new starts another");
         first.push_back(RunResumed{::getpid(), "resumed by " + host_name()});
     } else {
-        if (auto added = co_await store.add_run(beginning.manifest); !added)
+        if (auto added = co_await store->add_run(beginning.manifest); !added)
             co_return added.error();
         bench.say("run " + run);
         first.push_back(Identified{*identity});
@@ -127,19 +129,19 @@ Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store& store,
     auto stored = co_await bench.journal.append(run, std::move(first));
     if (!stored) co_return stored.error();
     std::move(stored->begin(), stored->end(), std::back_inserter(beginning.history));
-    if (auto told = endpoint.describe(absolute(store.path()), run); !told) co_return told.error();
+    if (auto told = endpoint->describe(absolute(store->path()), run); !told) co_return told.error();
 
     RunPlan plan;
-    plan.note.endpoint = endpoint.name();
+    plan.note.endpoint = endpoint->name();
     plan.note.board = request.board.name;
     plan.note.identity = *identity;
     plan.note.run = run;
-    plan.note.store = absolute(store.path());
+    plan.note.store = absolute(store->path());
     plan.manifest = std::move(beginning.manifest);
     plan.board = std::move(request.board);
     plan.recipe = std::move(request.recipe);
     auto ended = co_await run_board(std::move(plan), std::move(beginning.history), bench);
-    auto told_again = endpoint.describe(absolute(store.path()), run);
+    auto told_again = endpoint->describe(absolute(store->path()), run);
     if (!ended) co_return ended.error();
     if (!told_again) co_return told_again.error();
     TuneOutcome outcome{run, std::move(*ended)};

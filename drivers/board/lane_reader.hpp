@@ -32,21 +32,21 @@ struct WireOperation {
     enum class Kind : std::uint8_t { read, write, wait_until, pause };
     Kind kind = Kind::read;
     std::uint32_t address = 0;
-    std::uint32_t mask = 0;     // in place
-    std::uint32_t value = 0;    // in place: written, waited for, or microseconds of a pause
-    std::uint32_t result = 0;   // in place: read, read back, or seen when the wait ended
-    bool read_back = false;     // of a write: `result` is meaningful
-    bool expired = false;       // of a wait: it ended without its condition
+    std::uint32_t mask = 0;    // in place
+    std::uint32_t value = 0;   // in place: written, waited for, or microseconds of a pause
+    std::uint32_t result = 0;  // in place: read, read back, or seen when the wait ended
+    bool read_back = false;    // of a write: `result` is meaningful
+    bool expired = false;      // of a wait: it ended without its condition
     bool operator==(const WireOperation&) const = default;
 };
 
 struct SavedField {
     FieldName field;
-    std::uint32_t address = 0, mask = 0;   // in place
-    std::uint32_t value = 0;               // in the field's own units
-    std::uint32_t lowest = 0, highest = 0; // limits, in the field's own units
+    std::uint32_t address = 0, mask = 0;    // in place
+    std::uint32_t value = 0;                // in the field's own units
+    std::uint32_t lowest = 0, highest = 0;  // limits, in the field's own units
     Role role = Role::none;
-    std::string dimension;                 // of a tuned field: r1, ...
+    std::string dimension;  // of a tuned field: r1, ...
     bool operator==(const SavedField&) const = default;
 };
 

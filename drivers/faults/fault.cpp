@@ -6,24 +6,42 @@ namespace lanewright {
 
 const char* name_of(Cause cause) {
     switch (cause) {
-        case Cause::none: return "none";
-        case Cause::unreachable: return "unreachable";
-        case Cause::timeout: return "timeout";
-        case Cause::outcome_unknown: return "outcome unknown";
-        case Cause::board_reset: return "board reset";
-        case Cause::refused: return "refused by the board";
-        case Cause::not_accepted: return "write not accepted";
-        case Cause::wait_expired: return "wait expired";
-        case Cause::wrong_board: return "wrong board";
-        case Cause::not_allowed: return "not allowed";
-        case Cause::busy: return "busy";
-        case Cause::bad_config: return "bad configuration";
-        case Cause::no_permission: return "no permission";
-        case Cause::io: return "input/output";
-        case Cause::stopped: return "stopped";
-        case Cause::bad_data: return "bad data";
-        case Cause::diverged: return "diverged";
-        case Cause::internal: return "internal";
+        case Cause::none:
+            return "none";
+        case Cause::unreachable:
+            return "unreachable";
+        case Cause::timeout:
+            return "timeout";
+        case Cause::outcome_unknown:
+            return "outcome unknown";
+        case Cause::board_reset:
+            return "board reset";
+        case Cause::refused:
+            return "refused by the board";
+        case Cause::not_accepted:
+            return "write not accepted";
+        case Cause::wait_expired:
+            return "wait expired";
+        case Cause::wrong_board:
+            return "wrong board";
+        case Cause::not_allowed:
+            return "not allowed";
+        case Cause::busy:
+            return "busy";
+        case Cause::bad_config:
+            return "bad configuration";
+        case Cause::no_permission:
+            return "no permission";
+        case Cause::io:
+            return "input/output";
+        case Cause::stopped:
+            return "stopped";
+        case Cause::bad_data:
+            return "bad data";
+        case Cause::diverged:
+            return "diverged";
+        case Cause::internal:
+            return "internal";
     }
     return "unknown";
 }

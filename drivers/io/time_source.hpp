@@ -123,14 +123,15 @@ Result<T> run_until_done(TimeSource& time, Task<T> task) {
     std::exception_ptr error;
     auto& io = time.io();
     io.restart();
-    boost::asio::co_spawn(io, std::move(task), [&](std::exception_ptr thrown, Result<T> result) {
-        if (thrown) {
-            error = thrown;
-        } else {
-            outcome.emplace(std::move(result));
-        }
-        io.stop();
-    });
+    boost::asio::co_spawn(io, std::move(task),
+                          [&](const std::exception_ptr& thrown, Result<T> result) {
+                              if (thrown) {
+                                  error = thrown;
+                              } else {
+                                  outcome.emplace(std::move(result));
+                              }
+                              io.stop();
+                          });
     time.run();
     if (error) std::rethrow_exception(error);
     if (!outcome) throw std::logic_error("the loop ended before its main task");

@@ -32,10 +32,9 @@ class Workers {
     std::unique_ptr<Pool> pool_;
 };
 
-// Runs `job` on the pool and gives its value, or throws its exception, on the io thread. Virtual
-// time stands still meanwhile. There is no deadline: a job is expected to end.
+// The coroutine behind compute().
 template <class F>
-boost::asio::awaitable<std::invoke_result_t<F&>> compute(Workers& workers, F job) {
+boost::asio::awaitable<std::invoke_result_t<F&>> compute_on(Workers* workers, F job) {
     using Value = std::invoke_result_t<F&>;
     using Held = std::conditional_t<std::is_void_v<Value>, bool, Value>;
     struct Call {
@@ -57,9 +56,16 @@ boost::asio::awaitable<std::invoke_result_t<F&>> compute(Workers& workers, F job
     };
     const auto call = std::make_shared<Call>(std::move(job));
     std::function<void()> there = [call] { call->run(); };
-    co_await workers.run_there(std::move(there));
+    co_await workers->run_there(std::move(there));
     if (call->error) std::rethrow_exception(call->error);
     if constexpr (!std::is_void_v<Value>) co_return std::move(*call->value);
+}
+
+// Runs `job` on the pool and gives its value, or throws its exception, on the io thread. Virtual
+// time stands still meanwhile. There is no deadline: a job is expected to end.
+template <class F>
+boost::asio::awaitable<std::invoke_result_t<F&>> compute(Workers& workers, F job) {
+    return compute_on(&workers, std::move(job));
 }
 
 }  // namespace lanewright

@@ -159,6 +159,7 @@ int main(int count, char** words) {
     }
     Rows rows(std::cout);
     const Findings findings = measure(*options);
+    std::size_t decisions = 0;
     for (const auto& [strategy, lanes] : findings.tallies) {
         Tally all;
         for (std::size_t lane = 0; lane < lanes.size(); ++lane) {
@@ -166,6 +167,7 @@ int main(int count, char** words) {
             all.add(lanes[lane]);
         }
         write_strategy(rows, std::string(strategy), all);
+        decisions += all.attainment.size();
     }
     // Better than the best is no success: one of the two is wrong.
     rows.row({.name = "decisions_beyond_best",
@@ -173,7 +175,7 @@ int main(int count, char** words) {
               .unit = "",
               .better = Better::less,
               .must = 0,
-              .n = options->seeds * options->chips * findings.tallies.size(),
+              .n = decisions,
               .seed = 1});
     const int status = rows.finish();
     return findings.impossible > 0 ? exit_impossible : status;

@@ -53,7 +53,7 @@ std::string right(const std::string& text, std::size_t width) {
 
 std::string table_line(const std::string& name, const std::string& value, const std::string& unit,
                        const std::string& must, const std::string& aim, const std::string& note) {
-    std::string line = left(name, 32) + right(value, 11) + " " + left(unit, 8) + right(must, 10) +
+    std::string line = left(name, 30) + right(value, 11) + " " + left(unit, 8) + right(must, 10) +
                        right(aim, 10) + (note.empty() ? "" : " " + note);
     line.erase(line.find_last_not_of(' ') + 1);
     return line + "\n";

@@ -103,17 +103,17 @@ Options options_from(int count, char** words) {
     std::exit(70);
 }
 
-Task<TuneOutcome> tune_mortally(BoardFile file, TuneRequest request, Store& store,
-                                const Endpoint& endpoint, TimeSource& time, Workers& workers,
-                                Stop stop, Reaper& reaper) {
-    auto link = std::make_unique<MortalLink>(make_link(time, file.link), reaper);
-    auto board = co_await open_board(std::move(file), std::move(link), time);
+Task<TuneOutcome> tune_mortally(BoardFile file, TuneRequest request, Store* store,
+                                const Endpoint* endpoint, TimeSource* time, Workers* workers,
+                                Stop stop, Reaper* reaper) {
+    auto link = std::make_unique<MortalLink>(make_link(*time, file.link), *reaper);
+    auto board = co_await open_board(std::move(file), std::move(link), *time);
     if (!board) co_return board.error();
-    MortalJournal journal(store, reaper);
+    MortalJournal journal(*store, *reaper);
     std::function<LinkCounts()> counts = [] { return LinkCounts{}; };
     std::function<void(const std::string&)> say = [](const std::string&) {};
-    Bench bench{(*board)->lanes(), journal, workers, time, stop, endpoint.note_path(), {},
-                counts,            say};
+    Bench bench{(*board)->lanes(),     journal, *workers, *time, stop,
+                endpoint->note_path(), {},      counts,   say};
     RunId began;
     auto outcome = co_await tune_board(std::move(request), bench, store, endpoint, &began);
     auto closed = co_await (*board)->close();
@@ -144,19 +144,21 @@ int run(int count, char** words) {
     Workers workers(time, 1);
     Stop stop(io);
     TuneRequest request;
-    for (std::uint16_t lane = 0; lane < board->map.lane_count; ++lane) request.lanes.push_back(lane);
+    for (std::uint16_t lane = 0; lane < board->map.lane_count; ++lane)
+        request.lanes.push_back(lane);
     if (recipe->lanes) request.lanes = *recipe->lanes;
     request.board = *board;
     request.recipe = std::move(*recipe);
     request.link = text_of(board->link);
     request.seed = options.seed;
-    auto outcome = run_until_done(time, tune_mortally(*board, std::move(request), **store,
-                                                      *endpoint, time, workers, stop, reaper));
+    auto outcome = run_until_done(time, tune_mortally(*board, std::move(request), store->get(),
+                                                      &*endpoint, &time, &workers, stop, &reaper));
     if (!outcome) give_up(outcome.error().text());
     std::printf("{");
     const char* comma = "";
     for (const auto& [point, passed] : reaper.passed()) {
-        std::printf("%s\"%s\": %llu", comma, point.c_str(), static_cast<unsigned long long>(passed));
+        std::printf("%s\"%s\": %llu", comma, point.c_str(),
+                    static_cast<unsigned long long>(passed));
         comma = ", ";
     }
     std::printf("}\n");

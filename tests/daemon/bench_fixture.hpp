@@ -17,7 +17,8 @@ namespace lanewright::test {
 class TemporaryFolder {
   public:
     TemporaryFolder() {
-        std::string pattern = (std::filesystem::temp_directory_path() / "lanewright-XXXXXX").string();
+        std::string pattern =
+            (std::filesystem::temp_directory_path() / "lanewright-XXXXXX").string();
         path_ = ::mkdtemp(pattern.data());
     }
     ~TemporaryFolder() {
@@ -35,8 +36,7 @@ class TemporaryFolder {
 
 inline BoardFile demo_board() {
     Complaints complaints;
-    auto board =
-        load_board_file(LANEWRIGHT_SOURCE_DIR "/configs/boards/demo.json", complaints);
+    auto board = load_board_file(LANEWRIGHT_SOURCE_DIR "/configs/boards/demo.json", complaints);
     if (!board) throw std::runtime_error(complaints.text());
     return std::move(*board);
 }
@@ -77,8 +77,9 @@ class EngineBench {
     }
 
     // One start on a board whose codes persist between starts; `prepare` may plant faults.
-    Start start(StartOptions options,
-                const std::function<void(FakeBoard&)>& prepare = [](FakeBoard&) {}) {
+    Start start(
+        const StartOptions& options,
+        const std::function<void(FakeBoard&)>& prepare = [](FakeBoard&) {}) {
         boost::asio::io_context io;
         VirtualTimeSource time(io);
         FakeBoard board(time, 8);
@@ -119,7 +120,7 @@ class EngineBench {
         request.seed = options.seed;
         request.anew = options.anew;
         out.outcome = run_until_done(
-            time, tune_board(std::move(request), bench, **store, *endpoint, &out.run));
+            time, tune_board(std::move(request), bench, store->get(), &*endpoint, &out.run));
         if (!out.run.empty()) {
             out.events = (*store)->events(out.run);
             out.state = fold(out.events);

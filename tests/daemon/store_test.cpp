@@ -158,7 +158,9 @@ TEST_CASE("A run is found by its id, by a prefix of just one, or as the latest")
 
 TEST_CASE("A store of a newer format, or a file of another kind, is refused and left alone") {
     TemporaryFolder folder;
-    { Database made(folder / "s.db", Database::Mode::read_write); }
+    {
+        Database made(folder / "s.db", Database::Mode::read_write);
+    }
     {
         SQLite::Database raw(folder / "s.db", SQLite::OPEN_READWRITE);
         raw.exec("PRAGMA user_version = 99");
@@ -197,18 +199,18 @@ TEST_CASE("Appends that wait together share a commit and keep their own order") 
     REQUIRE(run_until_done(time, (*store)->add_run(small_manifest("run-1"))).has_value());
     TaskGroup group(io);
     struct Appender {
-        static Task<void> many(Store& into, std::uint16_t lane) {
+        static Task<void> many(Store* into, std::uint16_t lane) {
             for (std::uint32_t i = 0; i < 50; ++i) {
                 std::vector<Event> one;
                 one.push_back(ReadingVoid{Lane{lane}, i, 0, "x"});
-                auto stored = co_await into.append("run-1", std::move(one));
+                auto stored = co_await into->append("run-1", std::move(one));
                 if (!stored) co_return stored.error();
             }
             co_return Result<void>{};
         }
     };
     for (std::uint16_t lane = 0; lane < 8; ++lane) {
-        group.spawn("appender", Appender::many(**store, lane));
+        group.spawn("appender", Appender::many(store->get(), lane));
     }
     REQUIRE(run_until_done(time, group.join()).has_value());
     std::map<std::uint16_t, std::uint32_t> next;
