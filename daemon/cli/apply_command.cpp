@@ -39,12 +39,18 @@ RestoreNote note_for(const RunView& view, bool former) {
     return note;
 }
 
-Task<void> apply_on(Bench bench, RestoreNote note, const Endpoint* endpoint, Store* store,
-                    bool former) {
+Task<void> apply_on(Bench bench, RestoreNote note, Endpoint* endpoint, Store* store,
+                    const RegisterMap* map, bool former) {
     auto identity = co_await bench.reader.identify();
     if (!identity) co_return identity.error();
-    if (auto mended = co_await mend_endpoint(*identity, bench, store); !mended) {
+    if (auto mended = co_await mend_board(*identity, bench, store, endpoint); !mended) {
         co_return mended.error();
+    }
+    // What the board file does not allow is refused before anything is noted or written.
+    for (const SavedLane& lane : note.lanes) {
+        if (auto allowed = map->check_codes(lane.lane, codes_of(lane)); !allowed) {
+            co_return allowed.error();
+        }
     }
     // The note stands while lanes are written, so that an interrupted apply is finished later.
     note.endpoint = endpoint->name();
@@ -57,18 +63,19 @@ Task<void> apply_on(Bench bench, RestoreNote note, const Endpoint* endpoint, Sto
     co_return co_await std::move(settling);
 }
 
-Task<void> apply_at_hand(const BoardAtHand* at_hand, RestoreNote note, Store* store,
-                         Workers* workers, TimeSource* time, Stop stop, bool former) {
+Task<void> apply_at_hand(BoardAtHand* at_hand, RestoreNote note, Store* store, Workers* workers,
+                         TimeSource* time, Stop stop, bool former) {
     auto board = co_await reach(at_hand->file, time);
     if (!board) co_return board.error();
     std::function<LinkCounts()> counts = [] { return LinkCounts{}; };
     std::function<void(const std::string&)> say = [](const std::string& text) {
         print_error("lanewright: " + text);
     };
-    const Endpoint& endpoint = at_hand->endpoint;
+    Endpoint& endpoint = at_hand->endpoint;
     Bench bench{(*board)->lanes(),    *store, *workers, *time, stop,
                 endpoint.note_path(), {},     counts,   say};
-    auto applying = apply_on(std::move(bench), std::move(note), &endpoint, store, former);
+    auto applying =
+        apply_on(std::move(bench), std::move(note), &endpoint, store, &(*board)->map(), former);
     auto written = co_await std::move(applying);
     auto closed = co_await (*board)->close();
     if (written && !closed) co_return closed.error();

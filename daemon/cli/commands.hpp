@@ -18,8 +18,8 @@ struct CheckOptions {
 int run_check(const CheckOptions& options);
 
 struct TuneOptions {
-    std::string board_path, recipe_path, link, lanes, store_path, condition;
-    std::optional<std::uint64_t> seed;
+    std::string board_path, recipe_path, link, store_path, condition;
+    std::optional<std::string> lanes, seed;  // as typed
     std::vector<std::string> tags;
     unsigned threads = 1;  // workers that strategies compute on
     bool anew = false, dry_run = false, json = false;

@@ -44,8 +44,7 @@ void add_tune(CLI::App& app, TuneOptions& options) {
     verb->add_option("--link", options.link, link_help)->check(why_no_link);
     verb->add_option("--lanes", options.lanes, "such as 0,2-5; default: the recipe's");
     verb->add_option("--store", options.store_path, store_help);
-    verb->add_option("--seed", options.seed, "default: the recipe's, else 1")
-        ->check(CLI::NonNegativeNumber);
+    verb->add_option("--seed", options.seed, "default: the recipe's, else 1");
     verb->add_option("--tag", options.tags, "KEY=VALUE, kept with the run; may be repeated")
         ->allow_extra_args(false);
     verb->add_option("--condition", options.condition, "the corner at hand, such as 85C-low");
@@ -153,8 +152,12 @@ int run(int count, char** words) {
 }  // namespace
 
 int main(int count, char** words) {
+    lanewright::secure_standard_streams();
     try {
         return run(count, words);
+    } catch (const lanewright::OutputError& error) {
+        lanewright::print_error(std::string("lanewright: ") + error.what());
+        return lanewright::exit_io;
     } catch (const std::exception& error) {
         lanewright::Fault fault;
         fault.cause = lanewright::Cause::internal;

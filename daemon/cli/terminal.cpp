@@ -1,9 +1,12 @@
 #include "daemon/cli/terminal.hpp"
 
+#include <fcntl.h>
 #include <unistd.h>
 
+#include <cerrno>
 #include <cstdio>
 #include <cstdlib>
+#include <cstring>
 #include <nlohmann/json.hpp>
 #include <string_view>
 
@@ -12,6 +15,14 @@
 #include "daemon/views/run_json.hpp"
 
 namespace lanewright {
+
+void secure_standard_streams() {
+    for (const int descriptor : {STDIN_FILENO, STDOUT_FILENO, STDERR_FILENO}) {
+        if (::fcntl(descriptor, F_GETFD) >= 0 || errno != EBADF) continue;
+        // The lowest free number is this one, as those below are open.
+        if (::open("/dev/null", O_RDWR) != descriptor) std::abort();
+    }
+}
 
 bool is_terminal(int descriptor) {
     return ::isatty(descriptor) == 1;
@@ -25,8 +36,9 @@ bool may_colour(int descriptor) {
 }
 
 void print(const std::string& text) {
-    std::fwrite(text.data(), 1, text.size(), stdout);
-    std::fflush(stdout);
+    const bool all = std::fwrite(text.data(), 1, text.size(), stdout) == text.size();
+    if (all && std::fflush(stdout) == 0) return;
+    throw OutputError(std::string("stdout cannot be written: ") + std::strerror(errno));
 }
 
 void print_error(const std::string& text) {

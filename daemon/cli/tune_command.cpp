@@ -1,6 +1,8 @@
 #include <unistd.h>
 
 #include <algorithm>
+#include <charconv>
+#include <limits>
 #include <nlohmann/json.hpp>
 
 #include "daemon/cli/board_at_hand.hpp"
@@ -62,10 +64,10 @@ void require_tags(const Recipe& recipe, const std::map<std::string, std::string>
 std::vector<std::uint16_t> lanes_of(const TuneOptions& options, const Recipe& recipe,
                                     const BoardFile& board) {
     std::vector<std::uint16_t> lanes;
-    if (!options.lanes.empty()) {
+    if (options.lanes) {
         std::string why;
-        auto parsed = parse_lanes(options.lanes, why);
-        if (!parsed) throw UsageError("--lanes " + options.lanes + ": " + why);
+        auto parsed = parse_lanes(*options.lanes, why);
+        if (!parsed) throw UsageError("--lanes \"" + *options.lanes + "\": " + why);
         lanes = std::move(*parsed);
     } else if (recipe.lanes) {
         lanes = *recipe.lanes;
@@ -74,11 +76,20 @@ std::vector<std::uint16_t> lanes_of(const TuneOptions& options, const Recipe& re
     }
     for (const std::uint16_t lane : lanes) {
         if (lane >= board.map.lane_count) {
-            throw UsageError("--lanes " + options.lanes + ": board " + board.name +
+            throw UsageError("lane " + std::to_string(lane) + ": board " + board.name +
                              " has lanes 0 to " + std::to_string(board.map.lane_count - 1));
         }
     }
     return lanes;
+}
+
+std::uint64_t seed_from(const std::string& text) {
+    std::uint64_t seed = 0;
+    const char* end = text.data() + text.size();
+    const auto [rest, error] = std::from_chars(text.data(), end, seed);
+    if (error == std::errc{} && rest == end) return seed;
+    throw UsageError("--seed \"" + text + "\": expected a whole number from 0 to " +
+                     std::to_string(std::numeric_limits<std::uint64_t>::max()));
 }
 
 struct TuneJob {
@@ -106,7 +117,7 @@ Result<TuneJob> prepare(const TuneOptions& options) {
     job.request.lanes = lanes_of(options, recipe, at_hand->file);
     job.request.board = at_hand->file;
     job.request.link = text_of(at_hand->file.link);
-    job.request.seed = options.seed.value_or(recipe.seed.value_or(1));
+    job.request.seed = options.seed ? seed_from(*options.seed) : recipe.seed.value_or(1);
     job.request.condition = options.condition;
     job.request.anew = options.anew;
     job.request.recipe = std::move(recipe);
@@ -131,7 +142,7 @@ Task<TuneOutcome> tune_at_hand(TuneJob* job, Store* store, Workers* workers, Tim
     std::function<void(const std::string&)> tell = [progress](const std::string& text) {
         progress->interject("lanewright: " + text);
     };
-    const Endpoint& endpoint = job->at_hand.endpoint;
+    Endpoint& endpoint = job->at_hand.endpoint;
     Bench bench{(*board)->lanes(),    *store,     *workers, *time, stop,
                 endpoint.note_path(), {progress}, counts,   tell};
     auto outcome = co_await tune_board(job->request, std::move(bench), store, &endpoint, began);

@@ -4,6 +4,7 @@
 #include <sys/socket.h>
 #include <sys/stat.h>
 
+#include <algorithm>
 #include <cctype>
 #include <cstdlib>
 #include <filesystem>
@@ -102,12 +103,46 @@ Result<Endpoint> Endpoint::take(const LinkDescription& link) {
     return endpoint;
 }
 
+Result<void> Endpoint::hold_board(const Identity& identity) {
+    const bool has_serial =
+        std::any_of(identity.values.begin(), identity.values.end(),
+                    [](const IdentityValue& value) { return value.name == "serial"; });
+    if (!has_serial) return {};
+    std::string text;
+    for (const IdentityValue& value : identity.values) {
+        text += value.name + "=" + std::to_string(value.value) + ";";
+    }
+    const std::string path = lock_directory() + "/" + file_stem("board:" + text) + ".lock";
+    auto lock = FileLock::take(path, "this board, over another link,");
+    if (!lock) return lock.error();
+    board_lock_ = std::move(*lock);
+    holds_board_ = true;
+    const std::string left_behind = lock_file_value(path, "note");
+    std::error_code error;
+    const bool stands = !left_behind.empty() && fs::exists(left_behind, error);
+    if (!left_behind.empty() && error) return unreadable_note(left_behind, error.message());
+    if (stands && left_behind != note_path_) {
+        other_note_path_ = left_behind;  // its name stays in the lock file until it is mended
+        return {};
+    }
+    return describe("", "");
+}
+
+std::vector<std::string> Endpoint::notes() const {
+    std::vector<std::string> out{note_path_};
+    if (!other_note_path_.empty()) out.push_back(other_note_path_);
+    return out;
+}
+
 Result<void> Endpoint::describe(const std::string& store, const std::string& run) const {
     std::error_code error;
     const bool pending = fs::exists(note_path_, error);
-    return lock_.describe("endpoint=" + name_ + "\nnote=" + note_path_ +
-                          "\nrestore=" + (pending ? "pending" : "none") + "\nstore=" + store +
-                          "\nrun=" + run + "\n");
+    const std::string text = "endpoint=" + name_ + "\nnote=" + note_path_ +
+                             "\nrestore=" + (pending ? "pending" : "none") + "\nstore=" + store +
+                             "\nrun=" + run + "\n";
+    auto described = lock_.describe(text);
+    if (described && holds_board_) described = board_lock_.describe(text);
+    return described;
 }
 
 }  // namespace lanewright

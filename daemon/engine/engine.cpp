@@ -17,6 +17,11 @@ using namespace std::chrono_literals;
 
 // Writing the final codes is tried again after a reset; more than this is a broken board.
 constexpr int settle_attempts = 4;
+constexpr std::uint32_t save_attempts = 6;
+constexpr const char* not_restorable =
+    "the codes on the chip lie outside the board file's limits or are forbidden, so that they "
+    "could "
+    "not be restored; nothing was written. Set allowed codes first, or correct the board file";
 
 // What a fault of one register transaction means for the lane and the run.
 enum class Reaction { read_anew, fail_lane, end_run };
@@ -56,6 +61,7 @@ class Engine {
 
     void make_jobs();
     void take_history(const std::vector<StoredEvent>& history);
+    Task<SavedLane> save_lane(Lane lane);
     Task<void> save_lanes();
     Task<void> run_waves();
     Task<void> lane_task(Lane lane);
@@ -73,6 +79,8 @@ class Engine {
     SavedLane resting(const LaneState& lane) const;
     void board_was_reset();
     bool should_stop() const;
+    std::string unsettled_sentence() const;
+    void add_unsettled(Fault& fault) const;
     RunEnded ended(const Result<void>& outcome) const;
 
     RunPlan plan_;
@@ -147,14 +155,31 @@ bool Engine::should_stop() const {
            bench_.time.now() - started_ > std::chrono::duration<double>(plan_.recipe.wall_limit_s);
 }
 
+// The lane's values as found. A reset meanwhile changes them, and nothing was written yet: again.
+Task<SavedLane> Engine::save_lane(Lane lane) {
+    Result<SavedLane> saved = Fault{};
+    for (std::uint32_t attempt = 0; attempt < save_attempts; ++attempt) {
+        saved = co_await bench_.reader.save(lane);
+        if (saved || reaction_to(saved.error().cause) != Reaction::read_anew) break;
+        co_await bench_.time.sleep_until(bench_.time.now() + pause_before(attempt), bench_.stop);
+    }
+    co_return saved;
+}
+
 // Every lane whose saved values are known goes into the note before the first write of the run.
+// Codes that may not be written could not be restored either: such a lane is left alone.
 Task<void> Engine::save_lanes() {
+    const CodeSpace space = code_space_of(plan_.board);
     for (const auto& [number_of_lane, job] : jobs_) {
         const Lane lane{number_of_lane};
         if (!state_.lanes[number_of_lane].saved) {
-            auto saved = co_await bench_.reader.save(lane);
+            auto saved = co_await save_lane(lane);
             if (!saved) co_return saved.error();
-            auto storing = append(LaneSaved{std::move(*saved)});
+            const bool allowed = space.allows(codes_of(*saved));
+            std::vector<Event> events;
+            events.push_back(LaneSaved{std::move(*saved)});
+            if (!allowed) events.push_back(LaneFinished{lane, LaneOutcome::failed, not_restorable});
+            auto storing = append(std::move(events));
             if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         }
         const LaneState& known = state_.lanes[number_of_lane];
@@ -378,6 +403,16 @@ Task<void> Engine::settle_rest() {
     co_return outcome;
 }
 
+std::string Engine::unsettled_sentence() const {
+    return "Lanes " + unsettled_ + " do not hold the codes they should; these stand in " +
+           bench_.note_path + " and are written at the next contact";
+}
+
+void Engine::add_unsettled(Fault& fault) const {
+    if (unsettled_.empty()) return;
+    fault.hint += (fault.hint.empty() ? "" : " ") + unsettled_sentence();
+}
+
 RunEnded Engine::ended(const Result<void>& outcome) const {
     RunEnded out;
     if (!outcome) {
@@ -392,12 +427,7 @@ RunEnded Engine::ended(const Result<void>& outcome) const {
         out.ending = Ending::wall_limit;
         out.reason = "the recipe's wall limit was reached";
     }
-    if (!unsettled_.empty()) {
-        out.reason += (out.reason.empty() ? "" : ". ");
-        out.reason += "Lanes " + unsettled_ +
-                      " do not hold the codes they should; these stand in " + bench_.note_path +
-                      " and are written at the next contact";
-    }
+    if (!unsettled_.empty()) out.reason += (out.reason.empty() ? "" : ". ") + unsettled_sentence();
     out.link = bench_.link_counts();
     out.wall_s = std::chrono::duration<double>(bench_.time.now() - started_).count();
     return out;
@@ -418,12 +448,12 @@ Task<RunEnded> Engine::run(std::vector<StoredEvent> history) {
     if (!stored) {
         Fault fault = stored.error();
         if (!outcome && outcome.error().cause != Cause::io) fault = outcome.error();
-        if (!unsettled_.empty()) fault.hint = end.reason;
+        add_unsettled(fault);
         co_return fault;
     }
     if (!outcome) {
         Fault fault = outcome.error();
-        if (!unsettled_.empty()) fault.hint = end.reason;
+        add_unsettled(fault);
         co_return fault;
     }
     co_return end;

@@ -51,7 +51,10 @@ void LaneMachine::start_compare(const Decision& decision) {
     decision_ = decision;
     stage_ = Stage::compare;
     batch_.reset();
-    procedure_ = make_fresh_comparison(setup_.problem, decision.codes, setup_.verify_rounds);
+    // Proof is needed at the required error ratio, whatever the search was content with.
+    LaneProblem problem = setup_.problem;
+    problem.reading.error_ratio = problem.required.error_ratio;
+    procedure_ = make_fresh_comparison(problem, decision.codes, setup_.verify_rounds);
 }
 
 const std::vector<Request>& LaneMachine::batch() {

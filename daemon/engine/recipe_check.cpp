@@ -62,17 +62,24 @@ class Check {
     void error_ratios() {
         ratio_in_reach("/required/error_ratio", recipe_.required.error_ratio);
         ratio_in_reach("/search_error_ratio", recipe_.search_error_ratio);
+        shown_by_one_look("/search_error_ratio", recipe_.search_error_ratio);
+        if (recipe_.required.error_ratio != recipe_.search_error_ratio) {
+            shown_by_one_look("/required/error_ratio", recipe_.required.error_ratio);
+        }
+    }
+
+    void shown_by_one_look(const std::string& pointer, double ratio) {
         // Rule of three: with fewer than -ln(0.05) errors expected in a look, a position at the
         // error ratio shows none in more than one look of twenty and passes for error-free.
         const double least_errors = -std::log(0.05);
-        const double errors = bits_ * recipe_.search_error_ratio;
+        const double errors = bits_ * ratio;
         if (errors >= least_errors) return;
-        const double longer_s = seconds_for(least_errors / recipe_.search_error_ratio);
+        const double longer_s = seconds_for(least_errors / ratio);
         std::string hint = "an error ratio of " + short_number(rounded_up(least_errors / bits_));
         if (longer_s <= longest_dwell_s) hint += " or a dwell_s of " + short_number(longer_s);
-        complain("/search_error_ratio",
-                 short_number(recipe_.search_error_ratio) + ", " + short_number(errors) +
-                     " errors in a look of " + short_number(bits_) + " bits",
+        complain(pointer,
+                 short_number(ratio) + ", " + short_number(errors) + " errors in a look of " +
+                     short_number(bits_) + " bits",
                  "an error ratio of which one look shows about 3 errors", hint + " would do");
     }
 

@@ -51,7 +51,16 @@ Manifest manifest_of(const TuneRequest& request, const Identity& identity) {
 bool same_job(const Manifest& one, const Manifest& other) {
     return one.board_file.sha256 == other.board_file.sha256 &&
            one.recipe_file.sha256 == other.recipe_file.sha256 && one.lanes == other.lanes &&
-           one.seed == other.seed && same_board(one.identity, other.identity);
+           one.seed == other.seed && one.condition == other.condition && one.tags == other.tags &&
+           same_board(one.identity, other.identity);
+}
+
+// A later run has moved lanes of this one: what this one saved is no longer what stood there.
+bool shares_lanes(const Manifest& one, const Manifest& other) {
+    return same_board(one.identity, other.identity) &&
+           std::any_of(one.lanes.begin(), one.lanes.end(), [&](std::uint16_t lane) {
+               return std::find(other.lanes.begin(), other.lanes.end(), lane) != other.lanes.end();
+           });
 }
 
 struct Beginning {
@@ -60,15 +69,18 @@ struct Beginning {
     bool resumed = false;
 };
 
-// The newest run of the same job that did not come to its end, or a new one. One whose lanes are all
-// finished but whose end was not stored is closed by resuming it.
+// The newest run of the same job that did not come to its end, or a new one. One whose lanes are
+// all finished but whose end was not stored is closed by resuming it.
 Beginning beginning_of(const TuneRequest& request, const Identity& identity, const Store& store) {
     Beginning out;
     out.manifest = manifest_of(request, identity);
     if (request.anew) return out;
     const std::vector<RunRow> rows = store.runs();
     for (auto row = rows.rbegin(); row != rows.rend(); ++row) {
-        if (!same_job(row->manifest, out.manifest)) continue;
+        if (!same_job(row->manifest, out.manifest)) {
+            if (shares_lanes(row->manifest, out.manifest)) return out;
+            continue;
+        }
         std::vector<StoredEvent> history = store.events(row->id);
         const RunState state = fold(history);
         if (state.ended && state.ended->ending == Ending::complete) return out;
@@ -77,9 +89,8 @@ Beginning beginning_of(const TuneRequest& request, const Identity& identity, con
     return out;
 }
 
-}  // namespace
-
-Task<void> mend_endpoint(Identity present, Bench bench, Store* store) {
+// The note at bench.note_path, if there is one.
+Task<void> mend_note(Identity present, Bench bench, Store* store) {
     auto note = read_note(bench.note_path);
     if (!note) co_return note.error();
     if (!*note) co_return Result<void>{};
@@ -106,11 +117,25 @@ Task<void> mend_endpoint(Identity present, Bench bench, Store* store) {
     co_return fault;
 }
 
-Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store,
-                             const Endpoint* endpoint, RunId* began) {
+}  // namespace
+
+Task<void> mend_board(Identity present, Bench bench, Store* store, Endpoint* endpoint) {
+    if (auto held = endpoint->hold_board(present); !held) co_return held.error();
+    for (const std::string& path : endpoint->notes()) {
+        Bench at_note = bench;
+        at_note.note_path = path;
+        if (auto mended = co_await mend_note(present, at_note, store); !mended) {
+            co_return mended.error();
+        }
+    }
+    co_return endpoint->describe("", "");
+}
+
+Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store, Endpoint* endpoint,
+                             RunId* began) {
     auto identity = co_await bench.reader.identify();
     if (!identity) co_return identity.error();
-    if (auto mended = co_await mend_endpoint(*identity, bench, store); !mended) {
+    if (auto mended = co_await mend_board(*identity, bench, store, endpoint); !mended) {
         co_return mended.error();
     }
     Beginning beginning = beginning_of(request, *identity, *store);

@@ -31,10 +31,11 @@ struct TuneOutcome {
 };
 
 // On a fault the run, if it began, is in the store with what it came to; `began` tells its id.
-Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store,
-                             const Endpoint* endpoint, RunId* began);
+Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store, Endpoint* endpoint,
+                             RunId* began);
 
-// Writes what an earlier run left to restore on this endpoint; nothing to do is success.
-Task<void> mend_endpoint(Identity present, Bench bench, Store* store);
+// Takes the lock of the board that is at hand and writes what an earlier run left to restore on it,
+// over this link or another; nothing to do is success.
+Task<void> mend_board(Identity present, Bench bench, Store* store, Endpoint* endpoint);
 
 }  // namespace lanewright

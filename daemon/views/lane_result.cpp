@@ -63,6 +63,7 @@ LaneResult lane_result(const RunView& view, std::uint16_t lane_number) {
     if (found == view.state.lanes.end()) return out;
     const LaneState& lane = found->second;
     out.former = lane.former();
+    out.left = lane.settled;
     out.void_count = lane.void_count;
     out.reading_count = lane.readings.size();
     for (const LaneReadingRecord& record : lane.readings) {

@@ -37,6 +37,7 @@ struct Margin {
 struct LaneResult {
     std::uint16_t lane = 0;
     std::optional<LaneOutcome> outcome;  // empty: not finished
+    std::optional<Settlement> left;      // what stands on the chip since; empty: not settled
     std::optional<Judgement> judgement;  // of `after`; empty: failed or not there yet
     std::optional<Codes> former, decided;
     std::optional<Margin> before, after;  // fresh readings only

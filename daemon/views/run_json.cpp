@@ -16,18 +16,25 @@ json number_or_null(double value) {
     return std::isfinite(value) ? json(value) : json(nullptr);
 }
 
+// An edge of a closed eye is known as "at most" only: no value was measured.
+bool measured_value(const std::optional<Measured>& measured) {
+    return measured && measured->bound != Bound::at_most;
+}
+
 json value_of(const std::optional<Measured>& measured) {
-    return measured ? number_or_null(measured->value) : json(nullptr);
+    return measured_value(measured) ? number_or_null(measured->value) : json(nullptr);
 }
 
 json error_of(const std::optional<Measured>& measured) {
-    return measured ? number_or_null(measured->std_error) : json(nullptr);
+    return measured_value(measured) ? number_or_null(measured->std_error) : json(nullptr);
 }
 
 json opening(const std::optional<Measured>& whole, const std::optional<Measured>& one,
              const std::optional<Measured>& other) {
-    if (whole) return number_or_null(whole->value);
-    if (one && other) return number_or_null(one->value + other->value);
+    if (whole) return value_of(whole);
+    if (measured_value(one) && measured_value(other)) {
+        return number_or_null(one->value + other->value);
+    }
     return nullptr;
 }
 
@@ -46,7 +53,7 @@ json margin_json(const std::optional<Margin>& margin) {
              {"right_se_ui", error_of(reading.right_ui)},
              {"height_mv", opening(reading.height_mv, reading.up_mv, reading.down_mv)},
              {"width_ui", opening(reading.width_ui, reading.left_ui, reading.right_ui)},
-             {"score", number_or_null(score.value)},
+             {"score", score.bound == Bound::at_most ? json(nullptr) : number_or_null(score.value)},
              {"score_low", number_or_null(score.low)},
              {"score_high", number_or_null(score.high)},
              {"basis", name_of(reading.basis)},
@@ -101,6 +108,7 @@ json lane_json(const RunView& view, const LaneResult& lane) {
     json out{{"lane", lane.lane},
              {"verdict", lane.judgement ? json(name_of(lane.judgement->verdict)) : json(nullptr)},
              {"outcome", lane.outcome ? json(name_of(*lane.outcome)) : json(nullptr)},
+             {"left", lane.left ? json(name_of(*lane.left)) : json(nullptr)},
              {"former_codes", codes_or_null(view.space, lane.former)},
              {"codes", codes_or_null(view.space, lane.decided)},
              {"before", margin_json(lane.before)},

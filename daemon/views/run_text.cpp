@@ -32,6 +32,7 @@ std::string codes_text(const CodeSpace& space, const Codes& codes, char between)
 std::optional<double> opening_of(const std::optional<Margin>& margin, bool height) {
     if (!margin) return std::nullopt;
     const Reading& reading = margin->reading;
+    if (margin->score.bound == Bound::at_most) return std::nullopt;
     const auto& whole = height ? reading.height_mv : reading.width_ui;
     const auto& one = height ? reading.up_mv : reading.left_ui;
     const auto& other = height ? reading.down_mv : reading.right_ui;
@@ -45,7 +46,10 @@ std::string number_or_dash(const std::optional<double>& value, const char* patte
 }
 
 std::string score_text(const std::optional<Margin>& margin) {
-    if (!margin || !std::isfinite(margin->score.value)) return "-";
+    if (!margin) return "-";
+    if (margin->score.bound == Bound::at_most) return "closed";
+    if (!std::isfinite(margin->score.value))
+        return margin->reading.status == Status::no_lock ? "none" : "-";
     return format("%.2f", margin->score.value);
 }
 
@@ -161,7 +165,7 @@ std::string csv_header(const RunView& view) {
         const std::string unit = column.unit;
         out += "," + name + "_" + unit + "," + name + "_se_" + unit + "," + name + "_bound";
     }
-    return out + ",bit_count,cost_s,score,why\n";
+    return out + ",centred,bit_count,cost_s,score,why\n";
 }
 
 std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRecord& record) {
@@ -181,7 +185,8 @@ std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRe
                               csv_number(measured->std_error) + "," + name_of_bound(measured->bound)
                         : std::string(",,,");
     }
-    return out + "," + std::to_string(reading.bit_count) + "," + csv_number(reading.cost_s) + "," +
+    return out + (reading.centred_assumed ? ",assumed," : ",measured,") +
+           std::to_string(reading.bit_count) + "," + csv_number(reading.cost_s) + "," +
            csv_number(score_of(reading, view.recipe.required).value) + "," + csv_text(record.why) +
            "\n";
 }
@@ -238,8 +243,13 @@ std::string lane_sentence(const RunView& view, const LaneResult& lane) {
                    ? " kept"
                    : " became " + codes_text(view.space, *lane.decided, ' ');
     }
+    if (lane.left == Settlement::restored && lane.decided) out += " (the former put back)";
+    if (lane.left == Settlement::restored && !lane.decided) out += " put back";
     out += "; " + (lane.reason.empty() ? std::string("not finished") : lane.reason);
     if (lane.judgement && !lane.judgement->reason.empty()) out += "; " + lane.judgement->reason;
+    if (lane.after && lane.after->reading.centred_assumed) {
+        out += "; the monitor tells height and width only, so the eye is taken as centred";
+    }
     return out;
 }
 
@@ -258,14 +268,14 @@ std::string run_table(const RunView& view, bool colour) {
     };
     std::string out =
         format("%4s  %-9s %-9s", "lane", "verdict", "outcome") + codes_cell(codes_head) +
-        format(" %6s %6s %6s %5s %-10s %3s\n", "height", "width", "score", "score", "95 %", "n");
+        format(" %6s %6s %6s %6s %-10s %2s\n", "height", "width", "score", "score", "95 %", "n");
     out += format("%4s  %-9s %-9s", "", "", "") + codes_cell("") +
-           format(" %6s %6s %6s %5s %-10s\n", "mV", "UI", "before", "after", "limits");
+           format(" %6s %6s %6s %6s %-10s\n", "mV", "UI", "before", "after", "limits");
     for (const LaneResult& lane : lane_results(view)) {
         out += format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
                format(" %-9s", lane.outcome ? name_of(*lane.outcome) : "-") +
                codes_cell(lane.decided ? codes_text(view.space, *lane.decided, '/') : "-") +
-               format(" %6s %6s %6s %5s %-10s %3zu\n",
+               format(" %6s %6s %6s %6s %-10s %2zu\n",
                       number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
                       number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
                       score_text(lane.before).c_str(), score_text(lane.after).c_str(),

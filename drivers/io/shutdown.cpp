@@ -6,9 +6,22 @@
 
 namespace lanewright {
 
+namespace {
+
+// What was begun stays as it is; whoever owns lasting notes finds them at the next start.
+[[noreturn]] void end_at_once() {
+    constexpr char text[] =
+        "ended at once by a second signal; what was left undone is mended at the next start\n";
+    [[maybe_unused]] const auto written = ::write(STDERR_FILENO, text, sizeof text - 1);
+    constexpr int try_again = 75;  // sysexits.h, EX_TEMPFAIL
+    ::_exit(try_again);
+}
+
+}  // namespace
+
 struct ShutdownSignals::State : std::enable_shared_from_this<State> {
     State(boost::asio::io_context& io, Stop its_stop)
-        : signals(io, SIGTERM, SIGINT), stop(std::move(its_stop)) {}
+        : signals(io, SIGTERM, SIGINT, SIGHUP), stop(std::move(its_stop)) {}
     boost::asio::signal_set signals;
     Stop stop;
     int first = 0;
@@ -17,7 +30,7 @@ struct ShutdownSignals::State : std::enable_shared_from_this<State> {
         signals.async_wait(
             [self = shared_from_this()](const boost::system::error_code& failed, int number) {
                 if (failed) return;
-                if (self->first != 0) ::_exit(128 + number);
+                if (self->first != 0) end_at_once();
                 self->first = number;
                 self->stop.request();
                 self->listen();

@@ -1,5 +1,5 @@
 #pragma once
-// Purpose:   SIGTERM and SIGINT as a stop; a second one ends the process at once.
+// Purpose:   SIGTERM, SIGINT and SIGHUP as a stop; a second one ends the process at once (75).
 // Ownership: keeps the handlers while it lives; refers to the io_context.
 // Threads:   io thread.
 
