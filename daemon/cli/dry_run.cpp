@@ -21,6 +21,25 @@ struct LanePreview {
     double search_s = 0, compare_s = 0;  // declared bench time, at most
 };
 
+// Fields that the sequences write and that nothing can save: they clear themselves or cannot be
+// read.
+std::vector<FieldName> unsaved_fields(const BoardFile& board) {
+    std::vector<FieldName> out;
+    for (const Sequence* sequence : {&board.apply, &board.monitor.sequence, &board.bring_up}) {
+        for (const Step& step : *sequence) {
+            const auto* write = std::get_if<WriteStep>(&step);
+            if (write == nullptr) continue;
+            const FieldDescription* field = board.map.find(write->field);
+            const bool unsaved = field != nullptr && (field->access == Access::self_clearing ||
+                                                      field->access == Access::write_only);
+            if (unsaved && std::find(out.begin(), out.end(), write->field) == out.end()) {
+                out.push_back(write->field);
+            }
+        }
+    }
+    return out;
+}
+
 struct Preview {
     Identity identity;
     std::vector<LanePreview> lanes;
@@ -89,8 +108,12 @@ json preview_json(const Preview& preview, const TuneRequest& request) {
         for (const Request& asked : lane.first_batch) {
             batch.push_back({{"codes", codes_json(space, asked.codes)}, {"why", asked.why}});
         }
+        json unsaved = json::array();
+        for (const FieldName& field : unsaved_fields(request.board))
+            unsaved.push_back(field.text());
         lanes.push_back({{"lane", number(lane.saved.lane)},
                          {"may_write", std::move(fields)},
+                         {"may_write_without_value", std::move(unsaved)},
                          {"first_batch", std::move(batch)},
                          {"bench_s_at_most", lane.search_s + lane.compare_s}});
         bench_s += lane.search_s + lane.compare_s;
@@ -154,7 +177,9 @@ void print_preview(const Preview& preview, const TuneRequest& request) {
                       })->search_s +
                       preview.lanes.front().compare_s);
     print(line);
-    print("strobes and triggers that clear themselves are written by the sequences too\n");
+    for (const FieldName& field : unsaved_fields(request.board)) {
+        print("also written on each lane, has no value to keep: " + field.text() + "\n");
+    }
 }
 
 }  // namespace

@@ -391,13 +391,21 @@ void Object::finish() const {
                          [key](const JsonValue* child) { return child->key == key; }))
             absent.push_back(key);
     }
+    // A file with thousands of them is another kind of file; nobody reads that many complaints.
+    constexpr std::size_t most_named = 20;
+    std::size_t unknown = 0;
     for (const JsonValue* child : node_.value_->children) {
         if (asked_->contains(child->key)) continue;
+        if (++unknown > most_named) continue;
         std::string near = nearest_word(child->key, absent);
         if (near.empty()) near = nearest_word(child->key, known);
         node_.tree_->complain(child->key_offset, detail::pointer_of(*child),
                               "an unknown key " + in_quotes(child->key), words_text(known),
                               did_you_mean(near));
+    }
+    if (unknown > most_named) {
+        node_.complain(std::to_string(unknown) + " unknown keys", words_text(known),
+                       "only the first " + std::to_string(most_named) + " are named");
     }
 }
 
