@@ -7,6 +7,7 @@
 #include "adapt/search/score.hpp"
 #include "daemon/cli/log.hpp"
 #include "daemon/cli/terminal.hpp"
+#include "daemon/views/run_text.hpp"
 
 namespace lanewright {
 
@@ -69,7 +70,7 @@ void Progress::take(const StoredEvent& stored) {
 void Progress::say(std::uint16_t lane, const std::string& text) const {
     const std::string line = "lane " + std::to_string(lane) + ": " + text;
     log_note(line);
-    if (!terminal_) std::fprintf(stderr, "%s\n", line.c_str());
+    if (!terminal_) std::fputs(wrapped(line, "").c_str(), stderr);
 }
 
 // Bench time that the budget still allows, as declared; the lanes run side by side.

@@ -84,20 +84,6 @@ std::string verdict_cell(const LaneResult& lane, bool colour) {
     return escape + cell + "\033[0m";
 }
 
-// Breaks at spaces so that no line is longer than 80 columns.
-std::string wrapped(const std::string& text, const std::string& indent) {
-    std::istringstream words(text);
-    std::string out, line = indent, word;
-    while (words >> word) {
-        if (line.size() > indent.size() && line.size() + 1 + word.size() > 80) {
-            out += line + "\n";
-            line = indent;
-        }
-        line += (line.size() > indent.size() ? " " : "") + word;
-    }
-    return out + line + "\n";
-}
-
 // As it is where it fits, else broken at spaces.
 std::string fitted(const std::string& line) {
     return line.size() <= 80 ? line + "\n" : wrapped(line, "  ");
@@ -254,6 +240,19 @@ std::string lane_sentence(const RunView& view, const LaneResult& lane) {
 }
 
 }  // namespace
+
+std::string wrapped(const std::string& text, const std::string& indent) {
+    std::istringstream words(text);
+    std::string out, line = indent, word;
+    while (words >> word) {
+        if (line.size() > indent.size() && line.size() + 1 + word.size() > 80) {
+            out += line + "\n";
+            line = indent;
+        }
+        line += (line.size() > indent.size() ? " " : "") + word;
+    }
+    return out + line + "\n";
+}
 
 std::string run_table(const RunView& view, bool colour) {
     // The codes have their column where they fit; the account below the table has them anyway.

@@ -9,6 +9,10 @@
 
 namespace lanewright {
 
+// Broken at spaces so that no line is longer than 80 columns; each begins with `indent`, and the
+// last ends with a newline.
+std::string wrapped(const std::string& text, const std::string& indent);
+
 // At most 80 columns; `colour` adds terminal escapes to the verdicts.
 std::string run_table(const RunView& view, bool colour);
 
