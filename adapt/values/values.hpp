@@ -65,9 +65,17 @@ enum class ErrorDefinition : std::uint8_t { pattern, decision };
 // Whether a margin was read at the error ratio stated or extrapolated to it.
 enum class Basis : std::uint8_t { counted, extrapolated };
 
+// Where the edges of an eye are expected, from a model or an earlier reading; 0: not known. A
+// counting monitor starts looking there.
+struct Expected {
+    double up_mv = 0, down_mv = 0, left_ui = 0, right_ui = 0;
+    bool operator==(const Expected&) const = default;
+};
+
 struct MarginWanted {
     double error_ratio = 0;
-    std::uint64_t dwell_bits = 0;
+    std::uint64_t dwell_bits = 0;  // of the whole reading: a counting monitor shares it out
+    Expected expected;             // counting monitors only
     bool operator==(const MarginWanted&) const = default;
 };
 
@@ -81,6 +89,20 @@ struct Request {
     Condition condition{};
     std::variant<MarginWanted, LooksWanted> what;
     std::string why;  // for people and the log; takes no part in comparison of proposals
+};
+
+// By how much each edge moves inwards for one more unit of the normal deviate Q of the error ratio
+// (error ratio = half of erfc(Q / root 2)), from counts at two error ratios.
+struct EdgeSlopes {
+    Measured up_mv, down_mv, left_ui, right_ui;
+    bool operator==(const EdgeSlopes&) const = default;
+};
+
+// What the board told beside the margin, under the board file's names (die_temperature_c, ...).
+struct Telemetry {
+    std::string name;
+    double value = 0;
+    bool operator==(const Telemetry&) const = default;
 };
 
 // The margin of one lane at one set of codes: four distances from the data sampler's decision
@@ -97,7 +119,9 @@ struct Reading {
     ErrorDefinition error_definition = ErrorDefinition::pattern;
     double error_ratio = 0;                    // the ratio at which the edges are stated
     std::optional<double> centre_error_ratio;  // of a closed eye, where the monitor counts
+    std::optional<EdgeSlopes> slopes;          // of a counting monitor
     std::vector<Count> counts;                 // raw, where the board has them
+    std::vector<Telemetry> telemetry;
     std::uint64_t bit_count = 0;               // bits dwelt on in all
     double cost_s = 0;                         // declared cost, not measured time
 };

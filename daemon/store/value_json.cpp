@@ -39,6 +39,10 @@ json to_json_value(const Request& request) {
              {"why", request.why}};
     if (const auto* margin = std::get_if<MarginWanted>(&request.what)) {
         out["margin"] = {{"error_ratio", margin->error_ratio}, {"dwell_bits", margin->dwell_bits}};
+        if (margin->expected != Expected{}) {
+            const Expected& edges = margin->expected;
+            out["margin"]["expected"] = {edges.up_mv, edges.down_mv, edges.left_ui, edges.right_ui};
+        }
     } else {
         json looks = json::array();
         for (const Look& look : std::get<LooksWanted>(request.what).looks) {
@@ -56,8 +60,15 @@ Request request_from(const json& value) {
     out.why = value.at("why").get<std::string>();
     if (value.contains("margin")) {
         const json& margin = value.at("margin");
-        out.what = MarginWanted{margin.at("error_ratio").get<double>(),
-                                margin.at("dwell_bits").get<std::uint64_t>()};
+        MarginWanted wanted{margin.at("error_ratio").get<double>(),
+                            margin.at("dwell_bits").get<std::uint64_t>(),
+                            {}};
+        if (margin.contains("expected")) {
+            const json& edges = margin.at("expected");
+            wanted.expected = {edges.at(0).get<double>(), edges.at(1).get<double>(),
+                               edges.at(2).get<double>(), edges.at(3).get<double>()};
+        }
+        out.what = wanted;
     } else {
         LooksWanted wanted;
         for (const json& look : value.at("looks")) wanted.looks.push_back(look_from(look));

@@ -17,6 +17,29 @@
 
 namespace lanewright::sim {
 
+// What a moment adds to the noise-free truth: nothing, unless told otherwise.
+struct Moment {
+    double phase_ui = 0;   // of the sampling phase: slow wander, where the loop landed
+    double offset_mv = 0;  // of the decision threshold
+    double gain = 1;       // of the signal
+};
+
+// One set of codes of one lane, solved once and then asked many times: what a monitor looks at.
+// Not for two threads at a time.
+class EyeProbe {
+  public:
+    virtual ~EyeProbe() = default;
+    // Share of wrong bits against the known pattern, at a phase and threshold relative to the data
+    // sampler's decision point.
+    virtual double error_ratio(double phase_ui, double offset_mv, const Moment& moment) = 0;
+    virtual Margins margins(double error_ratio, const Moment& moment) = 0;
+    // Share of bits in which a monitor's sampler at that place and the data sampler at its own
+    // differ: what a monitor that compares with the receiver's decision counts.
+    virtual double disagreement(double phase_ui, double offset_mv, const Moment& moment) = 0;
+    // Between the earliest and the latest crossing of the equalized waveform.
+    virtual double crossing_spread_ui() const = 0;
+};
+
 class Oracle {
   public:
     // lane from 0, below target.lanes.size(). Throws BadData for a Touchstone file that cannot be
@@ -31,6 +54,8 @@ class Oracle {
     Margins margins(const std::vector<int>& codes, double error_ratio) const;
     double error_ratio_at(const std::vector<int>& codes, double phase_ui, double offset_mv) const;
     double screening_score(const std::vector<int>& codes, const Required& required) const;
+    // The oracle must outlive it.
+    std::unique_ptr<EyeProbe> probe(const std::vector<int>& codes) const;
     // One window of the response to a single +1 symbol, differential millivolts.
     std::vector<double> pulse_mv(const std::vector<int>& codes) const;
 
