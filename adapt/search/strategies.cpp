@@ -5,6 +5,7 @@
 
 #include "adapt/search/descent.hpp"
 #include "adapt/search/exhaustive.hpp"
+#include "adapt/search/ladder.hpp"
 #include "adapt/search/procedure.hpp"
 
 namespace lanewright {
@@ -14,6 +15,7 @@ constexpr std::array entries = {
     StrategyEntry{"descent", "coordinate descent on the codes", make_descent},
     StrategyEntry{"descent_axes", "coordinate descent on the response", make_descent_axes},
     StrategyEntry{"exhaustive", "every code, or every stride-th", make_exhaustive},
+    StrategyEntry{"ladder", "16 codes ordered by peaking, then single steps", make_ladder},
 };
 
 }  // namespace

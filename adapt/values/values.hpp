@@ -75,7 +75,7 @@ struct Expected {
 struct MarginWanted {
     double error_ratio = 0;
     std::uint64_t dwell_bits = 0;  // of the whole reading: a counting monitor shares it out
-    Expected expected;             // counting monitors only
+    Expected expected = {};        // counting monitors only
     bool operator==(const MarginWanted&) const = default;
 };
 
