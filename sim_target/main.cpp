@@ -18,6 +18,7 @@
 #include "sim_target/board/board_side.hpp"
 #include "sim_target/board/serve.hpp"
 #include "sim_target/target_file.hpp"
+#include "sim_target/truth_cache.hpp"
 #include "sim_target/truth_report.hpp"
 
 namespace {
@@ -36,6 +37,9 @@ struct TruthOptions {
     int lane = 0;
     std::string codes, required;
     bool best = false, all = false, json = false, csv = false;
+    int board = -1;
+    std::string cache;
+    bool no_cache = false;
 };
 
 int failed(const TruthOptions& options, int code, const std::string& what) {
@@ -50,15 +54,16 @@ int failed(const TruthOptions& options, int code, const std::string& what) {
 int run_truth(const TruthOptions& options) {
     Complaints complaints;
     const std::string folder = std::filesystem::path(options.target_path).parent_path().string();
-    const auto target = load_target(options.target_path, complaints, [&](const Object& top) {
+    auto target = load_target(options.target_path, complaints, [&](const Object& top) {
         decode_board_side(top, folder.empty() ? "." : folder);
     });
     if (!target) return failed(options, exit_config, complaints.text());
+    std::string problem = choose_board(*target, options.board);
+    if (!problem.empty()) return failed(options, exit_usage, "--population-board: " + problem);
     if (options.lane < 0 || static_cast<std::size_t>(options.lane) >= target->lanes.size())
         return failed(options, exit_usage,
                       "--lane " + std::to_string(options.lane) + ": this target has lanes 0 to " +
                           std::to_string(target->lanes.size() - 1));
-    std::string problem;
     std::optional<Required> required = target->required;
     if (!options.required.empty())
         required = required_from_text(options.required, target->required, problem);
@@ -71,7 +76,10 @@ int run_truth(const TruthOptions& options) {
     if (options.all) {
         results = all_codes(oracle, *required, threads);
     } else if (options.best) {
-        results.push_back(best_codes(oracle, *required, threads));
+        const std::string kept_in = options.no_cache        ? std::string()
+                                    : options.cache.empty() ? default_truth_folder()
+                                                            : options.cache;
+        results.push_back(kept_best_codes(oracle, *target, *required, threads, kept_in));
     } else {
         const auto codes = codes_from_text(options.codes, oracle.code_counts(), problem);
         if (!codes) return failed(options, exit_usage, "--codes: " + problem);
@@ -108,6 +116,10 @@ void add_serve(CLI::App& app, ServeOptions& options) {
     CLI::App* serve = app.add_subcommand("serve", "answer as the board on TCP and serial lines");
     serve->add_option("--target", options.target_path, "the target file")->required();
     serve->add_option("--tcp", options.tcp, "HOST:PORT to listen on, port 0 for any; repeatable");
+    serve
+        ->add_option("--population-board", options.population_board,
+                     "which board of the target's population, from 0 (the default)")
+        ->check(CLI::NonNegativeNumber);
     serve->add_option("--pty", options.pty, "path of a link to a new pseudo-terminal; repeatable");
 }
 
@@ -122,6 +134,14 @@ void add_truth(CLI::App& app, TruthOptions& options) {
     which->require_option(1);
     truth->add_option("--required", options.required,
                       "height_mv=H,width_ui=W,error_ratio=E; default: the target file's");
+    truth
+        ->add_option("--population-board", options.board,
+                     "which board of the target's population, from 0 (the default)")
+        ->check(CLI::NonNegativeNumber);
+    CLI::Option* cache = truth->add_option(
+        "--cache", options.cache, "folder that keeps best codes; default: the user's cache folder");
+    truth->add_flag("--no-cache", options.no_cache, "neither use nor keep best codes")
+        ->excludes(cache);
     CLI::Option* json = truth->add_flag("--json", options.json, "one JSON object on stdout");
     truth->add_flag("--csv", options.csv, "comma-separated values on stdout")->excludes(json);
 }

@@ -22,8 +22,11 @@ bool holds(const Forbidden& rule, const Codes& codes) {
 
 }  // namespace
 
-CodeSpace::CodeSpace(std::vector<Dimension> dimensions, std::vector<Forbidden> forbidden)
-    : dimensions_(std::move(dimensions)), forbidden_(std::move(forbidden)) {}
+CodeSpace::CodeSpace(std::vector<Dimension> dimensions, std::vector<Forbidden> forbidden,
+                     std::shared_ptr<const CodeList> list)
+    : dimensions_(std::move(dimensions)),
+      forbidden_(std::move(forbidden)),
+      list_(std::move(list)) {}
 
 bool CodeSpace::allows(const Codes& codes) const {
     if (codes.value.size() != dimensions_.size()) return false;
@@ -31,6 +34,7 @@ bool CodeSpace::allows(const Codes& codes) const {
         const auto& dimension = dimensions_[i];
         if (codes.value[i] < dimension.lowest || codes.value[i] > dimension.highest) return false;
     }
+    if (list_ && list_->codes.contains(codes) != list_->only) return false;
     return std::none_of(forbidden_.begin(), forbidden_.end(),
                         [&](const Forbidden& rule) { return holds(rule, codes); });
 }

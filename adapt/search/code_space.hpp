@@ -4,7 +4,9 @@
 // Threads:   const access from any thread.
 
 #include <cstdint>
+#include <memory>
 #include <optional>
+#include <set>
 #include <string>
 #include <vector>
 
@@ -38,15 +40,24 @@ struct Forbidden {
     std::string why;
 };
 
+// Codes taken one by one: those left out of a space, or the only ones that are in it. Where a log
+// stands in for a board, only what was read can be read.
+struct CodeList {
+    std::set<Codes> codes;
+    bool only = false;
+};
+
 class CodeSpace {
   public:
     CodeSpace() = default;
-    CodeSpace(std::vector<Dimension> dimensions, std::vector<Forbidden> forbidden);
+    CodeSpace(std::vector<Dimension> dimensions, std::vector<Forbidden> forbidden,
+              std::shared_ptr<const CodeList> list = {});
 
     const std::vector<Dimension>& dimensions() const { return dimensions_; }
     const std::vector<Forbidden>& forbidden() const { return forbidden_; }
+    const std::shared_ptr<const CodeList>& list() const { return list_; }  // null: none
 
-    // Right length, inside every range, and no forbidden combination.
+    // Right length, inside every range, no forbidden combination, and not ruled out by the list.
     bool allows(const Codes& codes) const;
 
     // Product of the ranges, forbidden combinations included.
@@ -65,6 +76,7 @@ class CodeSpace {
   private:
     std::vector<Dimension> dimensions_;
     std::vector<Forbidden> forbidden_;
+    std::shared_ptr<const CodeList> list_;
 };
 
 }  // namespace lanewright

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <limits>
 
 namespace lanewright {
 namespace {
@@ -29,7 +30,7 @@ void Ledger::add(const Codes& asked, const Reading& reading) {
     if (reading.status == Status::void_reading) return;
     const Request behind = request(asked, reading.condition, {});
     reading_count_ += 1;
-    standard_readings_ += lanewright::standard_readings(problem_->cost, behind);
+    standard_readings_ += lanewright::standard_readings(problem_->cost, behind, reading);
     bench_s_ += reading.cost_s > 0 ? reading.cost_s : cost_s(problem_->cost, behind);
     if (reading.codes != asked) aliases_.insert_or_assign(asked, reading.codes);
     auto& entry = entries_[reading.codes];
@@ -37,6 +38,44 @@ void Ledger::add(const Codes& asked, const Reading& reading) {
         entry.first = merit_of(reading, problem_->required);
     }
     entry.readings.push_back(reading);
+    remember(reading);
+}
+
+// Latched readings come without slopes and need no telling where to look.
+void Ledger::remember(const Reading& reading) {
+    constexpr std::size_t most_remembered = 64;
+    if (reading.status != Status::open || !reading.slopes) return;
+    const auto value = [](const std::optional<Measured>& edge) {
+        return edge && edge->bound == Bound::exact && edge->value > 0 ? edge->value : 0;
+    };
+    found_.push_front({reading.codes,
+                       {value(reading.up_mv), value(reading.down_mv), value(reading.left_ui),
+                        value(reading.right_ui)}});
+    if (found_.size() > most_remembered) found_.pop_back();
+}
+
+// Nearest by the sum of what each code differs by, in shares of its range; of equals the latest.
+Expected Ledger::expected_at(const Codes& codes) const {
+    Expected edges;
+    if (problem_->space == nullptr) return edges;
+    double nearest = std::numeric_limits<double>::infinity();
+    const auto& dimensions = problem_->space->dimensions();
+    for (const Found& found : found_) {
+        double distance = 0;
+        const std::size_t count =
+            std::min({dimensions.size(), codes.value.size(), found.codes.value.size()});
+        for (std::size_t i = 0; i < count; ++i) {
+            const double range =
+                std::max(1.0, static_cast<double>(dimensions[i].highest) - dimensions[i].lowest);
+            distance +=
+                std::abs(static_cast<double>(codes.value[i]) - found.codes.value[i]) / range;
+        }
+        if (distance < nearest) {
+            nearest = distance;
+            edges = found.edges;
+        }
+    }
+    return edges;
 }
 
 const Ledger::Entry* Ledger::find(const Codes& asked) const {
@@ -77,7 +116,14 @@ std::size_t Ledger::affordable() const {
 }
 
 Request Ledger::request(Codes codes, Condition now, std::string why) const {
-    return {std::move(codes), now, problem_->reading, std::move(why)};
+    Request request;
+    MarginWanted wanted = problem_->reading;
+    if (!found_.empty()) wanted.expected = expected_at(codes);
+    request.codes = std::move(codes);
+    request.condition = now;
+    request.what = wanted;
+    request.why = std::move(why);
+    return request;
 }
 
 }  // namespace lanewright

@@ -6,6 +6,7 @@
 // Readings are filed under the codes that were read back. A request that came back with other codes
 // is remembered too, so that it is not asked for again.
 
+#include <deque>
 #include <map>
 #include <span>
 #include <vector>
@@ -45,13 +46,22 @@ class Ledger {
     double bench_s() const { return bench_s_; }
     std::size_t asked_differently() const { return aliases_.size(); }
 
-    // The request of one search reading.
+    // The request of one search reading. A counting monitor is told where the edges may be: where
+    // the last open reading at the nearest codes found them.
     Request request(Codes codes, Condition now, std::string why) const;
 
   private:
+    struct Found {
+        Codes codes;
+        Expected edges;
+    };
+    void remember(const Reading& reading);
+    Expected expected_at(const Codes& codes) const;
+
     const LaneProblem* problem_;
     std::map<Codes, Entry> entries_;
     std::map<Codes, Codes> aliases_;  // asked for -> read back, where they differ
+    std::deque<Found> found_;  // edges of the last open counted readings, the latest in front
     std::uint32_t reading_count_ = 0;
     double standard_readings_ = 0, bench_s_ = 0;
 };

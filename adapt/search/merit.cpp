@@ -28,6 +28,10 @@ class HarmonicMean {
 
 }  // namespace
 
+bool gives_slope(const Merit& merit) {
+    return merit.roundness > 0 || (merit.score < 0 && std::isfinite(merit.score));
+}
+
 Merit merit_of(const Reading& reading, const Required& required) {
     Merit merit;
     if (reading.status == Status::no_lock || reading.status == Status::void_reading) return merit;

@@ -25,6 +25,7 @@ struct CostModel {
     double per_look_s = 0;
     std::uint32_t looks_per_margin = 1;  // looks behind one margin reading (latched monitors: 1)
     double bit_rate_hz = 0;
+    bool dwell_shared = false;  // the looks of a margin share its dwell (counted monitors)
 };
 
 // Declared cost of a request in seconds of bench time.
@@ -32,6 +33,10 @@ double cost_s(const CostModel& cost, const Request& request);
 
 // The same request in standard readings: 1 up to 16 looks and 0.1 s of dwell, else what it takes.
 double standard_readings(const CostModel& cost, const Request& request);
+
+// What a reading took, in standard readings: by its own looks and bits where they are on record,
+// else by the request.
+double standard_readings(const CostModel& cost, const Request& request, const Reading& reading);
 
 struct Budget {
     double standard_readings = 0;  // 0: no limit
@@ -42,6 +47,8 @@ struct Budget {
 struct MonitorNoise {
     double height_step_mv = 0, width_step_ui = 0;    // quantum of one edge
     double height_sigma_mv = 0, width_sigma_ui = 0;  // repeatability of one edge, 1 sigma
+    // Of a counted monitor's positions, 1 sigma, the same every time; it has no quantum.
+    double height_nonlinearity_mv = 0, width_nonlinearity_ui = 0;
 };
 
 struct LaneProblem {

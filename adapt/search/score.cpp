@@ -7,6 +7,7 @@
 #include <vector>
 
 #include "adapt/stats/normal.hpp"
+#include "adapt/stats/q_scale.hpp"
 
 namespace lanewright {
 namespace {
@@ -44,6 +45,28 @@ std::vector<Side> sides_of(const Reading& reading, const Required& required) {
     add_side(sides, reading.left_ui, per(required.width_ui, 2));
     add_side(sides, reading.right_ui, per(required.width_ui, 2));
     return sides;
+}
+
+// At the required error ratio, where the edges can be carried there.
+Reading carried(const Reading& reading, const Required& required) {
+    constexpr double rounding = 1e-9;
+    Reading out = reading;
+    if (!reading.slopes || reading.status == Status::no_lock || !(required.error_ratio > 0) ||
+        !(required.error_ratio < reading.error_ratio * (1 - rounding))) {
+        return out;
+    }
+    const auto carry = [&](std::optional<Measured>& edge, const Measured& slope) {
+        if (edge) {
+            edge = carried_edge(*edge, slope, reading.error_ratio, required.error_ratio);
+        }
+    };
+    carry(out.up_mv, reading.slopes->up_mv);
+    carry(out.down_mv, reading.slopes->down_mv);
+    carry(out.left_ui, reading.slopes->left_ui);
+    carry(out.right_ui, reading.slopes->right_ui);
+    out.error_ratio = required.error_ratio;
+    out.basis = Basis::extrapolated;
+    return out;
 }
 
 using Edge = std::optional<Measured> Reading::*;
@@ -86,7 +109,8 @@ double weighted_mean(const std::vector<Measured>& edges, double plain_mean) {
     return sum / weights;
 }
 
-Measured join(const std::vector<Measured>& edges, double step, double declared_sigma) {
+Measured join(const std::vector<Measured>& edges, double step, double declared_sigma,
+              double nonlinearity) {
     if (edges.size() == 1) return edges.front();
     const Bound bound = joint_bound(edges);
     const auto extreme =
@@ -108,13 +132,14 @@ Measured join(const std::vector<Measured>& edges, double step, double declared_s
     for (const auto& edge : edges) inverse_variances += 1 / (edge.std_error * edge.std_error);
     const auto count = static_cast<double>(edges.size());
     const double stated = std::isfinite(inverse_variances) ? count / inverse_variances : 0;
-    const double lasting = lasting_variance(step, std::min(declared_sigma, spread.sigma));
+    const double lasting = std::max(lasting_variance(step, std::min(declared_sigma, spread.sigma)),
+                                    std::min(stated, 0.25 * nonlinearity * nonlinearity));
     const double passing = std::max({stated - lasting, spread.sigma * spread.sigma, 0.0});
     return {weighted_mean(edges, spread.mean), std::sqrt(lasting + passing / count), bound};
 }
 
 void join_edge(Reading& mean, std::span<const Reading> readings, Edge edge, double step,
-               double sigma) {
+               double sigma, double nonlinearity = 0) {
     std::vector<Measured> edges;
     for (const auto& reading : readings) {
         if (reading.status != Status::void_reading && reading.*edge) {
@@ -122,7 +147,52 @@ void join_edge(Reading& mean, std::span<const Reading> readings, Edge edge, doub
         }
     }
     mean.*edge = std::nullopt;
-    if (!edges.empty()) mean.*edge = join(edges, step, sigma);
+    if (!edges.empty()) mean.*edge = join(edges, step, sigma, nonlinearity);
+}
+
+void join_slope(Reading& mean, std::span<const Reading> readings, Measured EdgeSlopes::* slope) {
+    std::vector<Measured> told;
+    for (const auto& reading : readings) {
+        if (reading.status == Status::void_reading || !reading.slopes) continue;
+        const Measured& each = (*reading.slopes).*slope;
+        if (each.bound == Bound::exact) told.push_back(each);
+    }
+    if (told.empty()) {
+        (*mean.slopes).*slope = {0, 0, Bound::at_least};
+        return;
+    }
+    const auto surest = std::min_element(
+        told.begin(), told.end(),
+        [](const Measured& a, const Measured& b) { return a.std_error < b.std_error; });
+    (*mean.slopes).*
+        slope = {weighted_mean(told, spread_of(told).mean), surest->std_error, Bound::exact};
+}
+
+void join_slopes(Reading& mean, std::span<const Reading> readings) {
+    const bool any = std::any_of(readings.begin(), readings.end(), [](const Reading& reading) {
+        return reading.status != Status::void_reading && reading.slopes;
+    });
+    mean.slopes.reset();
+    if (!any) return;
+    mean.slopes.emplace();
+    for (const auto slope :
+         {&EdgeSlopes::up_mv, &EdgeSlopes::down_mv, &EdgeSlopes::left_ui, &EdgeSlopes::right_ui}) {
+        join_slope(mean, readings, slope);
+    }
+}
+
+// Over the bits; nothing unless every reading has one.
+std::optional<double> joint_centre(std::span<const Reading> readings) {
+    double errors = 0, bits = 0;
+    for (const auto& reading : readings) {
+        if (reading.status == Status::void_reading) continue;
+        if (!reading.centre_error_ratio) return std::nullopt;
+        const double weight = std::max(static_cast<double>(reading.bit_count), 1.0);
+        errors += weight * *reading.centre_error_ratio;
+        bits += weight;
+    }
+    if (!(bits > 0)) return std::nullopt;
+    return errors / bits;
 }
 
 Status joint_status(const Reading& mean) {
@@ -154,6 +224,28 @@ double lasting_variance(double step, double sigma) {
     return step * step * sum / (2 * pi * pi);
 }
 
+double systematic_mv(double edge_mv, double step_tolerance) {
+    return std::abs(edge_mv) * std::max(step_tolerance, 0.0);
+}
+
+double edge_log_likelihood(const Measured& edge, double step, double sigma, double truth) {
+    const bool latched = step > 0;
+    const double half = latched ? 0.5 * step : 0;
+    const double blur = latched ? sigma : std::hypot(edge.std_error, sigma);
+    if (edge.bound == Bound::at_most) {
+        return log_interval_likelihood(-infinity, edge.value, truth, blur);
+    }
+    if (edge.bound == Bound::at_least) {
+        return log_interval_likelihood(edge.value - half, infinity, truth, blur);
+    }
+    if (latched) {
+        return log_interval_likelihood(edge.value - half, edge.value + half, truth, blur);
+    }
+    if (!(blur > 0)) return truth == edge.value ? 0 : -infinity;
+    const double away = (truth - edge.value) / blur;
+    return -0.5 * away * away - std::log(blur) - 0.5 * std::log(2 * std::numbers::pi);
+}
+
 Score score_of(const Reading& reading, const Required& required) {
     Score score;
     score.basis = reading.basis;
@@ -162,7 +254,9 @@ Score score_of(const Reading& reading, const Required& required) {
     score.high = infinity;
     if (reading.status == Status::void_reading) return score;
 
-    const auto sides = sides_of(reading, required);
+    const Reading there = carried(reading, required);
+    score.basis = there.basis;
+    const auto sides = sides_of(there, required);
     if (!sides.empty()) score.value = score.low = infinity;
     const double z_low = normal_q(outside_each_limit);
     const double z_high =
@@ -198,9 +292,7 @@ Reading mean_of(std::span<const Reading> readings, const MonitorNoise& noise) {
         if (mean.status == Status::void_reading) mean = reading;
         // The weakest claim among them holds for the whole.
         if (reading.basis == Basis::extrapolated) mean.basis = Basis::extrapolated;
-        if (reading.error_definition == ErrorDefinition::decision) {
-            mean.error_definition = ErrorDefinition::decision;
-        }
+        mean.error_definition = std::max(mean.error_definition, reading.error_definition);
         mean.error_ratio = std::max(mean.error_ratio, reading.error_ratio);
         mean.centred_assumed = mean.centred_assumed || reading.centred_assumed;
         cost += reading.cost_s;
@@ -210,12 +302,17 @@ Reading mean_of(std::span<const Reading> readings, const MonitorNoise& noise) {
     mean.cost_s = cost;
     mean.bit_count = bits;
     mean.counts.clear();
-    mean.centre_error_ratio.reset();
+    mean.centre_error_ratio = joint_centre(readings);
+    join_slopes(mean, readings);
     const double opening = std::numbers::sqrt2;  // both edges blur an opening
-    join_edge(mean, readings, &Reading::up_mv, noise.height_step_mv, noise.height_sigma_mv);
-    join_edge(mean, readings, &Reading::down_mv, noise.height_step_mv, noise.height_sigma_mv);
-    join_edge(mean, readings, &Reading::left_ui, noise.width_step_ui, noise.width_sigma_ui);
-    join_edge(mean, readings, &Reading::right_ui, noise.width_step_ui, noise.width_sigma_ui);
+    join_edge(mean, readings, &Reading::up_mv, noise.height_step_mv, noise.height_sigma_mv,
+              noise.height_nonlinearity_mv);
+    join_edge(mean, readings, &Reading::down_mv, noise.height_step_mv, noise.height_sigma_mv,
+              noise.height_nonlinearity_mv);
+    join_edge(mean, readings, &Reading::left_ui, noise.width_step_ui, noise.width_sigma_ui,
+              noise.width_nonlinearity_ui);
+    join_edge(mean, readings, &Reading::right_ui, noise.width_step_ui, noise.width_sigma_ui,
+              noise.width_nonlinearity_ui);
     join_edge(mean, readings, &Reading::height_mv, noise.height_step_mv,
               opening * noise.height_sigma_mv);
     join_edge(mean, readings, &Reading::width_ui, noise.width_step_ui,

@@ -88,8 +88,8 @@ StagedSearch::Plan StagedSearch::finals(bool cut_short) const {
 }
 
 // Goes through the scan's order over what was read, as far as the scan itself went: it ends with
-// the first batch that holds an open eye. At half of the budget it also ends where some edges
-// are open, as they give a slope; with none, a descent would be blind and the scan goes on.
+// the first batch that holds an open eye. At half of the budget it also ends where closed eyes
+// give a slope; with none, a descent would be blind and the scan goes on.
 StagedSearch::Scan StagedSearch::scan() const {
     Scan result;
     result.start = start_;
@@ -98,7 +98,7 @@ StagedSearch::Scan StagedSearch::scan() const {
     result.used = true;
     const std::size_t half = std::max(total_room_ / 2, scan_batch);
     for (std::size_t i = 0; i < scan_order_.size(); i += scan_batch) {
-        if (best.rank == 2 || (i >= half && best.roundness > 0)) return result;
+        if (best.rank == 2 || (i >= half && gives_slope(best))) return result;
         const std::size_t end = std::min(i + scan_batch, scan_order_.size());
         for (std::size_t j = i; j < end; ++j) {
             const auto* entry = ledger_.find(scan_order_[j]);
@@ -112,7 +112,7 @@ StagedSearch::Scan StagedSearch::scan() const {
         result.looked_at = end;
         if (!result.batch.empty()) return result;
     }
-    if (best.rank < 2 && !(best.roundness > 0)) result.start.reset();
+    if (best.rank < 2 && !gives_slope(best)) result.start.reset();
     return result;
 }
 

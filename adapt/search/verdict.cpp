@@ -112,8 +112,11 @@ Judgement judge(std::span<const Reading> readings, const Required& required,
         return judgement;
     }
     if (decided(score)) {
-        judge_clear(judgement, ratios_of(readings), required.error_ratio,
-                    mean.basis == Basis::extrapolated, accept_extrapolated,
+        // Carried along its slopes, the score is one at the required ratio.
+        const bool carried = score.basis == Basis::extrapolated && mean.basis == Basis::counted;
+        const double there = required.error_ratio;
+        judge_clear(judgement, carried ? RatiosRead{there, there} : ratios_of(readings), there,
+                    score.basis == Basis::extrapolated, accept_extrapolated,
                     mean.status == Status::no_lock);
         return judgement;
     }

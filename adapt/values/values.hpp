@@ -59,8 +59,9 @@ enum class Status : std::uint8_t {
     void_reading  // not a measurement (reset, lost link): never handed to a strategy
 };
 
-// What the monitor compares with. Under `decision`, counts at zero offset prove nothing.
-enum class ErrorDefinition : std::uint8_t { pattern, decision };
+// What the monitor compares with. Under `decision`, counts at zero offset prove nothing. `unknown`
+// only where margins were logged by other means and nobody can say.
+enum class ErrorDefinition : std::uint8_t { pattern, decision, unknown };
 
 // Whether a margin was read at the error ratio stated or extrapolated to it.
 enum class Basis : std::uint8_t { counted, extrapolated };
@@ -89,10 +90,11 @@ struct Request {
     Condition condition{};
     std::variant<MarginWanted, LooksWanted> what;
     std::string why;  // for people and the log; takes no part in comparison of proposals
+    double wait_s = 0;  // between the codes and the measurement, on top of what the board declares
 };
 
 // By how much each edge moves inwards for one more unit of the normal deviate Q of the error ratio
-// (error ratio = half of erfc(Q / root 2)), from counts at two error ratios.
+// (error ratio = half of erfc(Q / root 2)), from counts at two error ratios. Bound at_least: not told.
 struct EdgeSlopes {
     Measured up_mv, down_mv, left_ui, right_ui;
     bool operator==(const EdgeSlopes&) const = default;

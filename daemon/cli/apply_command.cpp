@@ -120,6 +120,13 @@ int apply(const ApplyOptions& options) {
         const Database database(path, Database::Mode::read_only);
         view = view_of(database.find_run(options.run), database);
     }
+    if (view->manifest.imported) {
+        Fault fault;
+        fault.cause = Cause::bad_data;
+        fault.what = "run " + view->manifest.run +
+                     " was imported: which board its codes belong to is not known";
+        return report(fault, options.json);
+    }
     const RestoreNote note = note_for(*view, options.former);
     if (note.lanes.empty()) {
         Fault fault;

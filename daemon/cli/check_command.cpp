@@ -7,6 +7,7 @@
 #include "daemon/cli/commands.hpp"
 #include "daemon/cli/exit_codes.hpp"
 #include "daemon/cli/terminal.hpp"
+#include "daemon/views/run_text.hpp"
 #include "drivers/board/check.hpp"
 
 namespace lanewright {
@@ -74,7 +75,7 @@ void print_report(const CheckReport& report, const BoardFile& file, const std::s
     char line[160];
     const auto say = [&line](const char* pattern, auto... values) {
         std::snprintf(line, sizeof line, pattern, values...);
-        print(line);
+        print(printable(line));
     };
     say("board %s at %s, dialect %s%s\n", file.name.c_str(), report.link_name.c_str(),
         report.dialect.c_str(), report.identity.simulated ? " (SIMULATED)" : "");
@@ -115,6 +116,7 @@ void print_report(const CheckReport& report, const BoardFile& file, const std::s
 }  // namespace
 
 int run_check(const CheckOptions& options) {
+    if (options.measure) return run_measure(options);
     auto at_hand = take_board(options.board_path, options.link);
     if (!at_hand) return report(at_hand.error(), options.json);
     auto note = read_note(at_hand->endpoint.note_path());

@@ -14,8 +14,14 @@ namespace lanewright {
 struct CheckOptions {
     std::string board_path, link;
     bool json = false;
+    // With --measure only:
+    bool measure = false;
+    std::string recipe_path, store_path, condition;
+    std::optional<std::string> lanes;
+    std::vector<std::string> tags;
 };
 int run_check(const CheckOptions& options);
+int run_measure(const CheckOptions& options);  // check --measure
 
 struct TuneOptions {
     std::string board_path, recipe_path, link, store_path, condition;
@@ -43,5 +49,17 @@ struct ApplyOptions {
     bool former = false, json = false;
 };
 int run_apply(const ApplyOptions& options);
+
+struct ReplayOptions {
+    std::string store_path, run, recipe_path;
+    bool strict = false, json = false;
+};
+int run_replay(const ReplayOptions& options);
+
+struct ImportOptions {
+    std::string store_path, readings_path, columns_path, board_path;
+    bool dry_run = false, json = false;
+};
+int run_import(const ImportOptions& options);
 
 }  // namespace lanewright

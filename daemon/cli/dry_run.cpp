@@ -19,13 +19,14 @@ struct LanePreview {
     SavedLane saved;
     std::vector<Request> first_batch;
     double search_s = 0, compare_s = 0;  // declared bench time, at most
+    double reading_s = 0;                // of one reading of the search
 };
 
 // Fields that the sequences write and that nothing can save: they clear themselves or cannot be
 // read.
 std::vector<FieldName> unsaved_fields(const BoardFile& board) {
     std::vector<FieldName> out;
-    for (const Sequence* sequence : {&board.apply, &board.monitor.sequence, &board.bring_up}) {
+    for (const Sequence* sequence : writing_sequences(board)) {
         for (const Step& step : *sequence) {
             const auto* write = std::get_if<WriteStep>(&step);
             if (write == nullptr) continue;
@@ -77,6 +78,7 @@ void fill_plans(Preview& preview, const TuneRequest& request) {
         LaneSetup setup =
             lane_setup_of(request.board, request.recipe, lane.saved.lane, request.seed);
         const double each = cost_s(setup.problem.cost, Request{{}, {}, setup.problem.reading, {}});
+        lane.reading_s = each;
         LaneMachine machine(std::move(setup));
         lane.first_batch = machine.first_batch(lane.saved);
         const BudgetChoice& budget = request.recipe.budget;
@@ -96,6 +98,13 @@ json field_json(const SavedField& field) {
             {"address", address},          {"mask", mask},
             {"present", field.value},      {"lowest", field.lowest},
             {"highest", field.highest}};
+}
+
+// Outside the lanes' budgets; less where the store knows what holds for the board.
+double preflight_s(const Preview& preview) {
+    return preview.lanes.empty() ? 0
+                                 : preflight_cost_at_most_s(preview.lanes.front().reading_s,
+                                                            preview.lanes.size());
 }
 
 json preview_json(const Preview& preview, const TuneRequest& request) {
@@ -128,6 +137,7 @@ json preview_json(const Preview& preview, const TuneRequest& request) {
             {"restore_pending",
              preview.pending_note.empty() ? json(nullptr) : json(preview.pending_note)},
             {"bench_s_at_most", bench_s},
+            {"preflight_s_at_most", preflight_s(preview)},
             {"lanes", std::move(lanes)}};
 }
 
@@ -176,6 +186,9 @@ void print_preview(const Preview& preview, const TuneRequest& request) {
                           return a.search_s + a.compare_s < b.search_s + b.compare_s;
                       })->search_s +
                       preview.lanes.front().compare_s);
+    print(line);
+    std::snprintf(line, sizeof line, "preflight at most %.1f s more, less where it is known\n",
+                  preflight_s(preview));
     print(line);
     for (const FieldName& field : unsaved_fields(request.board)) {
         print("also written on each lane, has no value to keep: " + field.text() + "\n");

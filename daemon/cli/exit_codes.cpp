@@ -12,11 +12,14 @@ ExitCode exit_code_of(Cause cause) {
         case Cause::board_reset:
         case Cause::refused:
         case Cause::not_accepted:
+        case Cause::codes_changed:
         case Cause::wait_expired:
             return exit_unreachable;
         case Cause::busy:
         case Cause::stopped:
             return exit_try_again;
+        case Cause::not_fit:
+            return exit_not_fit;
         case Cause::wrong_board:
         case Cause::not_allowed:
         case Cause::bad_config:

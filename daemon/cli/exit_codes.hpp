@@ -15,6 +15,7 @@ enum ExitCode : int {
     exit_internal = 70,
     exit_io = 74,
     exit_try_again = 75,
+    exit_not_fit = 76,  // an item of the preflight failed: nothing was searched
     exit_no_permission = 77,
     exit_config = 78
 };

@@ -30,10 +30,20 @@ std::string why_no_link(const std::string& text) {
 }
 
 void add_check(CLI::App& app, CheckOptions& options) {
-    CLI::App* verb = app.add_subcommand("check", "reach a board and try its link; moves no code");
+    CLI::App* verb = app.add_subcommand("check", "reach a board and try its link; measure it");
     verb->add_option("--board", options.board_path, "board file")->required();
     verb->add_option("--link", options.link, link_help)->check(why_no_link);
     verb->add_flag("--json", options.json, "one JSON object on stdout");
+    CLI::Option* measure = verb->add_flag("--measure", options.measure,
+                                          "is it fit to be searched? Codes are put back");
+    verb->add_option("--recipe", options.recipe_path, "read as this recipe does")->needs(measure);
+    verb->add_option("--lanes", options.lanes, "such as 0,2-5; default: all")->needs(measure);
+    verb->add_option("--store", options.store_path, store_help)->needs(measure);
+    verb->add_option("--tag", options.tags, "KEY=VALUE, kept with the run; may be repeated")
+        ->allow_extra_args(false)
+        ->needs(measure);
+    verb->add_option("--condition", options.condition, "the corner at hand, such as 85C-low")
+        ->needs(measure);
 }
 
 void add_tune(CLI::App& app, TuneOptions& options) {
@@ -86,6 +96,32 @@ void add_apply(CLI::App& app, ApplyOptions& options) {
     verb->add_flag("--json", options.json, "one JSON object on stdout");
 }
 
+void add_replay(CLI::App& app, ReplayOptions& options) {
+    CLI::App* verb =
+        app.add_subcommand("replay", "what a run's log gives: the same again, or another recipe");
+    verb->add_option("--store", options.store_path, store_help);
+    verb->add_option("run", options.run, run_help)->required();
+    verb->add_flag("--strict", options.strict,
+                   "the recorded answers to the same program; ends at the first difference");
+    verb->add_option("--recipe", options.recipe_path,
+                     "what this recipe would have decided on the logged readings");
+    verb->add_flag("--json", options.json, "one JSON object on stdout");
+}
+
+void add_import(CLI::App& app, ImportOptions& options) {
+    CLI::App* verb =
+        app.add_subcommand("import", "margins logged by other means, into a store as runs");
+    verb->add_option("--readings", options.readings_path, "the margins, comma-separated values")
+        ->required();
+    verb->add_option("--columns", options.columns_path, "column map: what each column means")
+        ->required();
+    verb->add_option("--board", options.board_path,
+                     "board file with limits, noise and costs; default: the map's own");
+    verb->add_option("--store", options.store_path, store_help);
+    verb->add_flag("--dry-run", options.dry_run, "read and check all rows; stores nothing");
+    verb->add_flag("--json", options.json, "one JSON object on stdout");
+}
+
 std::vector<std::string> verb_names(const CLI::App& app) {
     std::vector<std::string> names;
     for (const CLI::App* verb : app.get_subcommands({})) names.push_back(verb->get_name());
@@ -129,10 +165,14 @@ int run(int count, char** words) {
     StoreOptions runs, show;
     ExportOptions exported;
     ApplyOptions apply;
+    ReplayOptions replay;
+    ImportOptions import;
     add_check(app, check);
     add_tune(app, tune);
     add_store_verbs(app, runs, show, exported);
     add_apply(app, apply);
+    add_replay(app, replay);
+    add_import(app, import);
     try {
         app.parse(count, words);
     } catch (const CLI::Success& answered) {  // --help, --version
@@ -143,6 +183,8 @@ int run(int count, char** words) {
     if (app.got_subcommand("runs")) return run_runs(runs);
     if (app.got_subcommand("show")) return run_show(show);
     if (app.got_subcommand("export")) return run_export(exported);
+    if (app.got_subcommand("replay")) return run_replay(replay);
+    if (app.got_subcommand("import")) return run_import(import);
     open_log(count, words);  // of the verbs that talk to a board
     if (app.got_subcommand("check")) return run_check(check);
     if (app.got_subcommand("tune")) return run_tune(tune);

@@ -7,6 +7,7 @@
 #include "adapt/search/score.hpp"
 #include "daemon/cli/log.hpp"
 #include "daemon/cli/terminal.hpp"
+#include "daemon/engine/preflight.hpp"
 #include "daemon/views/run_text.hpp"
 
 namespace lanewright {
@@ -38,18 +39,21 @@ void Progress::on_event(const StoredEvent& event) noexcept {
 }
 
 void Progress::take(const StoredEvent& stored) {
+    if (const auto* item = std::get_if<PreflightItem>(&stored.event)) tell(*item);
     const std::optional<Lane> lane = lane_of(stored.event);
     if (!lane || lines_.find(number(*lane)) == lines_.end()) return;
     LaneLine& line = lines_[number(*lane)];
     if (const auto* intent = std::get_if<Intent>(&stored.event)) {
         line.phase =
             intent->stage == Stage::compare ? "before/after" : short_phase(intent->request.why);
+        line.side = intent->stage == Stage::preflight || intent->stage == Stage::reference;
     } else if (const auto* taken = std::get_if<ReadingTaken>(&stored.event)) {
+        line.bench_s += taken->reading.cost_s;
+        if (line.side) return draw_if_terminal();
         const double score = score_of(taken->reading, plan_.required).value;
         if (std::isfinite(score))
             line.best_score = std::max(score, line.best_score.value_or(score));
         ++line.reading_count;
-        line.bench_s += taken->reading.cost_s;
         if (line.phase != "before/after") line.search_s += taken->reading.cost_s;
     } else if (const auto* empty = std::get_if<ReadingVoid>(&stored.event)) {
         say(number(*lane), "void reading, taken anew: " + empty->cause);
@@ -64,6 +68,24 @@ void Progress::take(const StoredEvent& stored) {
             std::string(name_of(finished->outcome)) +
                 (finished->outcome == LaneOutcome::failed ? ": " + finished->reason : ""));
     }
+    draw_if_terminal();
+}
+
+// Quick items that pass are no news; what was measured is, and what did not pass.
+void Progress::tell(const PreflightItem& item) const {
+    const bool news =
+        item.result != ItemResult::passed ||
+        std::find(board_items().begin(), board_items().end(), item.name) != board_items().end();
+    if (!news || !item.from.empty()) return;
+    const std::string line =
+        "preflight: " + item.name + " " + name_of(item.result) + ": " +
+        (item.lane ? "lane " + std::to_string(number(*item.lane)) + ": " : std::string()) +
+        item.found;
+    log_note(line);
+    if (!terminal_) std::fputs(wrapped(line, "").c_str(), stderr);
+}
+
+void Progress::draw_if_terminal() {
     if (terminal_) draw(false);
 }
 

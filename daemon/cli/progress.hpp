@@ -41,6 +41,7 @@ class Progress : public Observer {
         std::optional<double> best_score;
         std::size_t reading_count = 0;
         double search_s = 0, bench_s = 0;
+        bool side = false;  // the reading under way is not the strategy's
         bool done = false;
     };
 
@@ -48,6 +49,8 @@ class Progress : public Observer {
     std::string line_of(std::uint16_t lane, const LaneLine& line) const;
     std::string time_left(const LaneLine& line) const;
     void draw(bool now);
+    void draw_if_terminal();
+    void tell(const PreflightItem& item) const;
     void say(std::uint16_t lane, const std::string& text) const;
 
     ProgressPlan plan_;

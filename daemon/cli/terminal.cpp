@@ -13,6 +13,7 @@
 #include "daemon/cli/exit_codes.hpp"
 #include "daemon/cli/log.hpp"
 #include "daemon/views/run_json.hpp"
+#include "daemon/views/run_text.hpp"
 
 namespace lanewright {
 
@@ -42,8 +43,9 @@ void print(const std::string& text) {
 }
 
 void print_error(const std::string& text) {
-    log_note(text);
-    std::fprintf(stderr, "%s\n", text.c_str());
+    const std::string shown = printable(text);
+    log_note(shown);
+    std::fprintf(stderr, "%s\n", shown.c_str());
     std::fflush(stderr);
 }
 

@@ -10,6 +10,7 @@
 #include "daemon/cli/dry_run.hpp"
 #include "daemon/cli/exit_codes.hpp"
 #include "daemon/cli/progress.hpp"
+#include "daemon/cli/run_words.hpp"
 #include "daemon/cli/terminal.hpp"
 #include "daemon/engine/tune.hpp"
 #include "daemon/store/store_error.hpp"
@@ -21,12 +22,6 @@ namespace lanewright {
 
 namespace {
 
-// A word of the command line that cannot be used; exit 64, not a matter of the files.
-class UsageError : public std::runtime_error {
-  public:
-    using std::runtime_error::runtime_error;
-};
-
 Recipe load_checked_recipe(const TuneOptions& options, const BoardFile& board,
                            Complaints& complaints) {
     auto recipe = load_recipe(options.recipe_path, complaints);
@@ -37,20 +32,6 @@ Recipe load_checked_recipe(const TuneOptions& options, const BoardFile& board,
     return std::move(*recipe);
 }
 
-std::map<std::string, std::string> tags_of(const std::vector<std::string>& words) {
-    std::map<std::string, std::string> tags;
-    for (const std::string& word : words) {
-        const std::size_t equals = word.find('=');
-        if (equals == std::string::npos || equals == 0) {
-            throw UsageError("--tag " + word + ": expected KEY=VALUE, such as --tag chip=A7");
-        }
-        if (!tags.emplace(word.substr(0, equals), word.substr(equals + 1)).second) {
-            throw UsageError("--tag " + word + ": this key is given twice");
-        }
-    }
-    return tags;
-}
-
 void require_tags(const Recipe& recipe, const std::map<std::string, std::string>& tags) {
     for (const std::string& key : recipe.required_tags) {
         if (!tags.contains(key)) {
@@ -59,28 +40,6 @@ void require_tags(const Recipe& recipe, const std::map<std::string, std::string>
             throw UsageError(text);
         }
     }
-}
-
-std::vector<std::uint16_t> lanes_of(const TuneOptions& options, const Recipe& recipe,
-                                    const BoardFile& board) {
-    std::vector<std::uint16_t> lanes;
-    if (options.lanes) {
-        std::string why;
-        auto parsed = parse_lanes(*options.lanes, why);
-        if (!parsed) throw UsageError("--lanes \"" + *options.lanes + "\": " + why);
-        lanes = std::move(*parsed);
-    } else if (recipe.lanes) {
-        lanes = *recipe.lanes;
-    } else {
-        for (std::uint16_t lane = 0; lane < board.map.lane_count; ++lane) lanes.push_back(lane);
-    }
-    for (const std::uint16_t lane : lanes) {
-        if (lane >= board.map.lane_count) {
-            throw UsageError("lane " + std::to_string(lane) + ": board " + board.name +
-                             " has lanes 0 to " + std::to_string(board.map.lane_count - 1));
-        }
-    }
-    return lanes;
 }
 
 std::uint64_t seed_from(const std::string& text) {
@@ -114,7 +73,7 @@ Result<TuneJob> prepare(const TuneOptions& options) {
     TuneJob job;
     job.request.tags = tags_of(options.tags);
     require_tags(recipe, job.request.tags);
-    job.request.lanes = lanes_of(options, recipe, at_hand->file);
+    job.request.lanes = lanes_of(options.lanes, recipe, at_hand->file);
     job.request.board = at_hand->file;
     job.request.link = text_of(at_hand->file.link);
     job.request.seed = options.seed ? seed_from(*options.seed) : recipe.seed.value_or(1);

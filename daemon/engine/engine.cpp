@@ -1,12 +1,9 @@
 #include "daemon/engine/engine.hpp"
 
 #include <algorithm>
-#include <map>
-#include <memory>
-#include <optional>
-#include <set>
 #include <utility>
 
+#include "daemon/engine/engine_job.hpp"
 #include "drivers/io/task_group.hpp"
 
 namespace lanewright {
@@ -15,22 +12,20 @@ namespace {
 
 using namespace std::chrono_literals;
 
-// Writing the final codes is tried again after a reset; more than this is a broken board.
-constexpr int settle_attempts = 4;
 constexpr std::uint32_t save_attempts = 6;
 constexpr const char* not_restorable =
     "the codes on the chip lie outside the board file's limits or are forbidden, so that they "
     "could "
     "not be restored; nothing was written. Set allowed codes first, or correct the board file";
 
-// What a fault of one register transaction means for the lane and the run.
-enum class Reaction { read_anew, fail_lane, end_run };
+}  // namespace
 
 Reaction reaction_to(Cause cause) {
     switch (cause) {
         case Cause::board_reset:
         case Cause::outcome_unknown:
         case Cause::not_accepted:
+        case Cause::codes_changed:
         case Cause::wait_expired:
             return Reaction::read_anew;
         case Cause::refused:
@@ -41,57 +36,9 @@ Reaction reaction_to(Cause cause) {
     }
 }
 
-// How long until a lane tries again after a void reading: a board that has just reset needs a
-// moment, and one that keeps failing must not be hammered.
 std::chrono::nanoseconds pause_before(std::uint32_t attempt) {
     return std::min<std::chrono::nanoseconds>(5ms * (1 << std::min(attempt, 8u)), 1s);
 }
-
-class Engine {
-  public:
-    Engine(RunPlan plan, Bench bench) : plan_(std::move(plan)), bench_(std::move(bench)) {}
-
-    Task<RunEnded> run(std::vector<StoredEvent> history);
-
-  private:
-    struct LaneJob {
-        std::unique_ptr<LaneMachine> machine;
-        std::vector<Event> unseen;  // stored, not yet told to the machine
-    };
-
-    void make_jobs();
-    void take_history(const std::vector<StoredEvent>& history);
-    Task<SavedLane> save_lane(Lane lane);
-    Task<void> save_lanes();
-    Task<void> run_waves();
-    Task<void> lane_task(Lane lane);
-    Task<bool> carry_out(Lane lane, Action action);
-    Task<bool> measure(Lane lane, DoMeasure what);
-    Task<bool> reading_failed(Lane lane, DoMeasure what, Fault fault);
-    Task<bool> fail_lane(Lane lane, Fault fault);
-    Task<void> settle(Lane lane, Settlement settlement, Codes codes);
-    Task<void> settle_rest();
-    Task<void> append(std::vector<Event> events);
-    Task<void> append(Event event);  // name its task before waiting for it: g++ 12.2 destroys
-                                     // aggregate temporaries of a co_await expression twice
-    Result<void> note_changed();
-    bool keeps_decision(const LaneState& lane) const;
-    SavedLane resting(const LaneState& lane) const;
-    void board_was_reset();
-    bool should_stop() const;
-    std::string unsettled_sentence() const;
-    void add_unsettled(Fault& fault) const;
-    RunEnded ended(const Result<void>& outcome) const;
-
-    RunPlan plan_;
-    Bench bench_;
-    RunState state_;
-    std::map<std::uint16_t, LaneJob> jobs_;
-    TimePoint started_{};
-    std::uint64_t resets_known_ = 0;
-    bool failed_ = false;    // a lane met what ends the run, or the store does
-    std::string unsettled_;  // what could not be put where it belongs, for the run's last words
-};
 
 void Engine::make_jobs() {
     for (const std::uint16_t lane : plan_.manifest.lanes) {
@@ -105,6 +52,9 @@ void Engine::take_history(const std::vector<StoredEvent>& history) {
     for (const StoredEvent& stored : history) {
         state_.apply(stored);
         const std::optional<Lane> lane = lane_of(stored.event);
+        if (std::holds_alternative<RunResumed>(stored.event)) {
+            for (auto& [number_of_lane, job] : jobs_) job.unseen.push_back(stored.event);
+        }
         if (!lane) continue;
         const auto job = jobs_.find(number(*lane));
         if (job != jobs_.end()) job->second.unseen.push_back(stored.event);
@@ -133,20 +83,6 @@ Task<void> Engine::append(Event event) {
     std::vector<Event> one;
     one.push_back(std::move(event));
     return append(std::move(one));
-}
-
-Result<void> Engine::note_changed() {
-    return write_note(bench_.note_path, plan_.note);
-}
-
-// Whether the lane's decided codes are to stay on the chip, should the run end now.
-bool Engine::keeps_decision(const LaneState& lane) const {
-    return lane.decision && plan_.recipe.afterwards == Afterwards::leave &&
-           !(lane.finished && lane.finished->outcome == LaneOutcome::failed);
-}
-
-SavedLane Engine::resting(const LaneState& lane) const {
-    return keeps_decision(lane) ? with_codes(*lane.saved, lane.decision->codes) : *lane.saved;
 }
 
 bool Engine::should_stop() const {
@@ -202,24 +138,6 @@ Task<bool> Engine::measure(Lane lane, DoMeasure what) {
     co_return true;
 }
 
-// After a reset every lane of the board holds its reset codes, those that had been settled too.
-void Engine::board_was_reset() {
-    const std::uint64_t resets = bench_.link_counts().resets;
-    if (resets == resets_known_)
-        return;  // another lane has told; lanes may be settled again by now
-    resets_known_ = resets;
-    bench_.say("the board has reset; lanes outside this run hold their reset codes now");
-    bool changed = false;
-    for (auto& [number_of_lane, lane] : state_.lanes) {
-        if (!lane.saved || lane.moved) continue;
-        lane.moved = true;
-        plan_.note.set(resting(lane));
-        changed = true;
-    }
-    if (!changed) return;
-    if (auto noted = note_changed(); !noted) bench_.say(noted.error().text());
-}
-
 Task<bool> Engine::reading_failed(Lane lane, DoMeasure what, Fault fault) {
     if (fault.cause == Cause::stopped) co_return false;
     switch (reaction_to(fault.cause)) {
@@ -230,58 +148,45 @@ Task<bool> Engine::reading_failed(Lane lane, DoMeasure what, Fault fault) {
         case Reaction::read_anew:
             break;
     }
-    if (fault.cause == Cause::board_reset) board_was_reset();
-    auto storing = append(ReadingVoid{lane, what.ordinal, what.attempt, fault.text()});
+    if (fault.cause == Cause::board_reset) board_was_reset(lane);
+    ReadingVoid voided{lane, what.ordinal, what.attempt, fault.text(), {}};
+    if (fault.cause == Cause::codes_changed) {
+        voided.changed_register = fault.reg.empty() ? "the codes" : fault.reg;
+        bench_.say("lane " + std::to_string(number(lane)) + ": " + fault.text());
+    }
+    auto storing = append(std::move(voided));
     if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
+    if (state_.lanes[number(lane)].codes_changed >= most_codes_changed) {
+        co_return co_await give_up(lane);
+    }
     co_await bench_.time.sleep_until(bench_.time.now() + pause_before(what.attempt), bench_.stop);
-    if (fault.cause == Cause::board_reset || fault.cause == Cause::outcome_unknown) {
+    if (fault.cause == Cause::outcome_unknown) {
         auto up = co_await bench_.reader.bring_up(lane);
         if (!up && reaction_to(up.error().cause) == Reaction::end_run) co_return up.error();
     }
     co_return true;
 }
 
-Task<bool> Engine::fail_lane(Lane lane, Fault fault) {
-    if (const LaneState& known = state_.lanes[number(lane)]; known.saved && known.moved) {
-        auto settling = settle(lane, Settlement::restored, *known.former());
-        if (auto settled = co_await std::move(settling); !settled) co_return settled.error();
-    }
+// The lane's codes are gone and its reference is to vouch for what follows.
+Task<void> Engine::bring_up_after_reset(Lane lane) {
+    jobs_.at(number(lane)).was_reset = false;
+    auto up = co_await bench_.reader.bring_up(lane);
+    if (!up && reaction_to(up.error().cause) == Reaction::end_run) co_return up.error();
+    auto storing = append(LaneReset{lane});
+    co_return co_await std::move(storing);
+}
+
+Task<bool> Engine::settle_as_asked(Lane lane, DoSettle what) {
+    if (what.settlement == Settlement::given_up) co_return co_await give_up(lane);
+    auto settled = co_await settle(lane, what.settlement, what.codes);
+    if (settled) co_return true;
+    Fault fault = settled.error();
+    if (reaction_to(fault.cause) == Reaction::end_run) co_return fault;
+    // The codes stay in the restore note; the lane says so.
+    fault.hint = "The lane's codes are not where they belong; the next contact writes them";
     auto storing = append(LaneFinished{lane, LaneOutcome::failed, fault.text()});
     if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
     co_return true;
-}
-
-// Puts the lane's codes where they are to stay. The board is asked even where nothing can be stored
-// any more.
-Task<void> Engine::settle(Lane lane, Settlement settlement, Codes codes) {
-    const SavedLane wanted = with_codes(*state_.lanes[number(lane)].saved, codes);
-    Fault last;
-    for (int attempt = 0; attempt < settle_attempts; ++attempt) {
-        auto written = co_await bench_.reader.restore(lane, wanted);
-        if (written) {
-            state_.lanes[number(lane)].moved = false;
-            const std::uint64_t resets_before = resets_known_;
-            auto storing = append(LaneSettled{lane, settlement, std::move(*written)});
-            auto stored = co_await std::move(storing);
-            if (resets_known_ != resets_before) {
-                // Another lane met a reset while this one's row was being stored: the codes are
-                // gone again, and settle_rest writes them.
-                state_.lanes[number(lane)].moved = true;
-            } else {
-                plan_.note.drop(lane);
-            }
-            if (auto noted = note_changed(); !noted) co_return noted.error();
-            if (!stored) co_return stored.error();
-            co_return Result<void>{};
-        }
-        last = written.error();
-        if (last.cause == Cause::board_reset) board_was_reset();
-        if (reaction_to(last.cause) != Reaction::read_anew) break;
-        co_await bench_.time.sleep_until(bench_.time.now() + 20ms);
-        auto up = co_await bench_.reader.bring_up(lane);
-        if (!up) last = up.error();
-    }
-    co_return last;
 }
 
 Task<bool> Engine::carry_out(Lane lane, Action action) {
@@ -297,17 +202,24 @@ Task<bool> Engine::carry_out(Lane lane, Action action) {
         if (auto noted = note_changed(); !noted) co_return noted.error();
         co_return true;
     }
-    if (const auto* settling = std::get_if<DoSettle>(&action)) {
-        auto settled = co_await settle(lane, settling->settlement, settling->codes);
-        if (settled) co_return true;
-        const Fault fault = settled.error();
-        if (reaction_to(fault.cause) == Reaction::end_run) co_return fault;
-        // The codes stay in the restore note; the lane says so.
-        Fault told = fault;
-        told.hint = "The lane's codes are not where they belong; the next contact writes them";
-        auto storing = append(LaneFinished{lane, LaneOutcome::failed, told.text()});
+    if (auto* settling = std::get_if<DoSettle>(&action)) {
+        co_return co_await settle_as_asked(lane, std::move(*settling));
+    }
+    if (auto* concluded = std::get_if<DoConcludeItem>(&action)) {
+        auto storing = append(std::move(concluded->item));
         if (auto stored = co_await std::move(storing); !stored) co_return stored.error();
         co_return true;
+    }
+    if (auto* stopping = std::get_if<DoStopRun>(&action)) {
+        Fault fault;
+        fault.cause = Cause::not_fit;
+        fault.what = std::move(stopping->reason);
+        fault.board = plan_.board.name;
+        fault.lane = lane;
+        fault.hint =
+            "Nothing that is read now can be compared with what was read before. Find "
+            "out what else the reset changed; the same command then goes on";
+        co_return fault;
     }
     if (auto* finish = std::get_if<DoFinish>(&action)) {
         auto storing = append(LaneFinished{lane, finish->outcome, std::move(finish->reason)});
@@ -320,6 +232,8 @@ Task<bool> Engine::carry_out(Lane lane, Action action) {
     fault.lane = lane;
     co_return fault;
 }
+
+namespace {
 
 // What the machine makes of the events stored since it was last asked; on a worker.
 struct NextAction {
@@ -336,10 +250,29 @@ NextAction next_action(LaneMachine& machine, const std::vector<Event>& events) {
     }
 }
 
-Task<void> Engine::lane_task(Lane lane) {
+// Whether the preflight asks for that, or an end that its readings bring about.
+bool belongs_to_preflight(const Action& action) {
+    if (const auto* measure = std::get_if<DoMeasure>(&action)) {
+        return measure->stage == Stage::preflight;
+    }
+    return std::holds_alternative<DoConcludeItem>(action) ||
+           std::holds_alternative<DoSettle>(action) || std::holds_alternative<DoFinish>(action);
+}
+
+}  // namespace
+
+Task<void> Engine::lane_task(Lane lane, Until until) {
     LaneJob& job = jobs_.at(number(lane));
     for (;;) {
         if (should_stop()) co_return Result<void>{};
+        if (job.was_reset) {
+            auto up = co_await bring_up_after_reset(lane);
+            if (!up) {
+                failed_ = true;
+                co_return up.error();
+            }
+            continue;
+        }
         auto work = [&job, events = std::exchange(job.unseen, {})] {
             return next_action(*job.machine, events);
         };
@@ -353,6 +286,9 @@ Task<void> Engine::lane_task(Lane lane) {
             failed_ = true;
             co_return fault;
         }
+        if (until == Until::preflight_item && !belongs_to_preflight(next.action)) {
+            co_return Result<void>{};
+        }
         auto more = co_await carry_out(lane, std::move(next.action));
         if (!more) {
             failed_ = true;
@@ -362,11 +298,14 @@ Task<void> Engine::lane_task(Lane lane) {
     }
 }
 
+// Lanes of a wave run beside each other, unless the preflight saw that they disturb each other.
 Task<void> Engine::run_waves() {
     for (const auto& wave : plan_.manifest.waves) {
         TaskGroup group(bench_.time.io());
         for (const std::uint16_t lane : wave) {
-            group.spawn("lane " + std::to_string(lane), lane_task(Lane{lane}));
+            group.spawn("lane " + std::to_string(lane), lane_task(Lane{lane}, Until::end));
+            if (!one_at_a_time()) continue;
+            if (auto joined = co_await group.join(); !joined) co_return joined.error();
         }
         if (auto joined = co_await group.join(); !joined) co_return joined.error();
         if (should_stop()) break;
@@ -374,51 +313,12 @@ Task<void> Engine::run_waves() {
     co_return Result<void>{};
 }
 
-// Lanes that an early end, or a reset after they were settled, left in codes nobody wants. A reset
-// meanwhile undoes what was settled before it, so there is more than one pass.
-Task<void> Engine::settle_rest() {
-    constexpr int passes = 3;
-    Result<void> outcome;
-    std::set<std::uint16_t> given_up;
-    for (int pass = 0; pass < passes; ++pass) {
-        for (auto& [number_of_lane, lane] : state_.lanes) {
-            if (!lane.saved || !lane.moved || given_up.contains(number_of_lane)) continue;
-            const Settlement settlement =
-                keeps_decision(lane) ? Settlement::decided : Settlement::restored;
-            const Codes codes = codes_of(resting(lane));
-            auto settled = co_await settle(Lane{number_of_lane}, settlement, codes);
-            if (settled || !lane.moved) continue;  // on the board, even if it could not be stored
-            given_up.insert(number_of_lane);
-            if (outcome) outcome = settled.error();
-        }
-    }
-    for (const auto& [number_of_lane, lane] : state_.lanes) {
-        if (!lane.saved || !lane.moved) {
-            plan_.note.drop(Lane{number_of_lane});
-        } else {
-            unsettled_ += (unsettled_.empty() ? "" : ", ") + std::to_string(number_of_lane);
-        }
-    }
-    if (auto noted = note_changed(); !noted && outcome) outcome = noted.error();
-    co_return outcome;
-}
-
-std::string Engine::unsettled_sentence() const {
-    return "Lanes " + unsettled_ + " do not hold the codes they should; these stand in " +
-           bench_.note_path + " and are written at the next contact";
-}
-
-void Engine::add_unsettled(Fault& fault) const {
-    if (unsettled_.empty()) return;
-    fault.hint += (fault.hint.empty() ? "" : " ") + unsettled_sentence();
-}
-
 RunEnded Engine::ended(const Result<void>& outcome) const {
     RunEnded out;
     if (!outcome) {
         out.ending = Ending::fault;
         out.reason = outcome.error().text();
-    } else if (state_.complete(plan_.manifest.lanes)) {
+    } else if (state_.complete(plan_.manifest.lanes) || (plan_.only_preflight && !should_stop())) {
         out.ending = Ending::complete;
     } else if (bench_.stop.requested()) {
         out.ending = Ending::stopped;
@@ -439,7 +339,8 @@ Task<RunEnded> Engine::run(std::vector<StoredEvent> history) {
     make_jobs();
     take_history(history);
     Result<void> outcome = co_await save_lanes();
-    if (outcome) outcome = co_await run_waves();
+    if (outcome && plan_.preflight) outcome = co_await preflight();
+    if (outcome && !plan_.only_preflight && !should_stop()) outcome = co_await run_waves();
     auto rest = co_await settle_rest();
     if (outcome && !rest) outcome = rest.error();
     RunEnded end = ended(outcome);
@@ -459,38 +360,9 @@ Task<RunEnded> Engine::run(std::vector<StoredEvent> history) {
     co_return end;
 }
 
-}  // namespace
-
 Task<RunEnded> run_board(RunPlan plan, std::vector<StoredEvent> history, Bench bench) {
     Engine engine(std::move(plan), std::move(bench));
     co_return co_await engine.run(std::move(history));
-}
-
-Task<void> settle_note(RestoreNote note, Identity present, Bench bench, bool in_journal,
-                       std::string why) {
-    if (!same_board(note.identity, present)) {
-        Fault fault;
-        fault.cause = Cause::wrong_board;
-        fault.what = "codes wait to be restored on another board than the one that is here now";
-        fault.board = note.board;
-        fault.hint = "Connect that board, or move " + bench.note_path +
-                     " away once its codes were written by hand";
-        co_return fault;
-    }
-    const std::vector<SavedLane> lanes = note.lanes;
-    for (const SavedLane& lane : lanes) {
-        auto written = co_await bench.reader.restore(lane.lane, lane);
-        if (!written) co_return written.error();
-        if (in_journal) {
-            std::vector<Event> event;
-            event.push_back(CodesWritten{lane.lane, std::move(*written), why});
-            auto stored = co_await bench.journal.append(note.run, std::move(event));
-            if (!stored) co_return stored.error();
-        }
-        note.drop(lane.lane);
-        if (auto noted = write_note(bench.note_path, note); !noted) co_return noted.error();
-    }
-    co_return Result<void>{};
 }
 
 }  // namespace lanewright

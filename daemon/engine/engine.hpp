@@ -1,5 +1,6 @@
 #pragma once
-// Purpose:   runs one run on one board: save, measure, conclude, apply, compare afresh, settle.
+// Purpose:   runs one run on one board: save, preflight, measure, conclude, apply, compare afresh,
+//            settle.
 //            It knows nothing of what a procedure measures for.
 // Ownership: refers to everything in Bench, which must outlive the run.
 // Threads:   the io thread; strategies compute on the workers.
@@ -38,7 +39,10 @@ struct RunPlan {
     Manifest manifest;
     BoardFile board;
     Recipe recipe;
-    RestoreNote note;  // endpoint, board, identity, run and store filled in; no lanes yet
+    RestoreNote note;       // endpoint, board, identity, run and store filled in; no lanes yet
+    bool preflight = true;  // is the bench fit to measure on? Before anything is searched
+    bool only_preflight = false;       // all of it, and no search
+    std::vector<PreflightItem> known;  // measured by earlier runs on this board and condition
 };
 
 // Runs, or goes on with, the run whose events so far are `history`. Returns how it ended; a Fault

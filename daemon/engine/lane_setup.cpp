@@ -73,12 +73,20 @@ CodeSpace code_space_of(const BoardFile& board) {
 
 CostModel cost_model_of(const BoardFile& board) {
     return {board.cost.settle_s, board.cost.per_look_s, board.cost.looks_per_margin,
-            board.bit_rate_gbps * 1e9};
+            board.bit_rate_gbps * 1e9, board.monitor.procedure == MonitorProcedure::counted};
 }
 
 MonitorNoise monitor_noise_of(const BoardFile& board) {
-    const MonitorDescription& monitor = board.monitor;
-    return {monitor.height.size, monitor.width.size, monitor.height.sigma, monitor.width.sigma};
+    const StepSize& height = board.monitor.height;
+    const StepSize& width = board.monitor.width;
+    if (!counts(board)) return {height.size, width.size, height.sigma, width.sigma};
+    // Edges out of counts are finer than a step: there is no quantum.
+    MonitorNoise noise;
+    noise.height_sigma_mv = height.sigma;
+    noise.width_sigma_ui = width.sigma;
+    noise.height_nonlinearity_mv = height.nonlinearity_steps * height.size;
+    noise.width_nonlinearity_ui = width.nonlinearity_steps * width.size;
+    return noise;
 }
 
 std::uint64_t dwell_bits_of(const BoardFile& board, const Recipe& recipe) {
@@ -89,6 +97,21 @@ std::uint64_t dwell_bits_of(const BoardFile& board, const Recipe& recipe) {
     while (power < whole && power < (std::uint64_t{1} << 62)) power <<= 1;
     // Half as long is nearer than twice as long: the recipe's dwell is a wish, not a minimum.
     return static_cast<double>(power) > 1.42 * bits ? power / 2 : power;
+}
+
+PreflightSetup preflight_setup_of(const BoardFile& board) {
+    const MonitorDescription& monitor = board.monitor;
+    PreflightSetup out;
+    out.limits = board.preflight.limits;
+    out.counted = counts(board);
+    out.height_reach_mv = monitor.height.size * monitor.height.most_steps;
+    out.least_bits = monitor.counted.least_bits;
+    out.most_errors = monitor.counted.most_errors;
+    return out;
+}
+
+bool counts(const BoardFile& board) {
+    return board.monitor.procedure == MonitorProcedure::counted;
 }
 
 LaneSetup lane_setup_of(const BoardFile& board, const Recipe& recipe, Lane lane,
@@ -113,6 +136,13 @@ LaneSetup lane_setup_of(const BoardFile& board, const Recipe& recipe, Lane lane,
     setup.seed = seed;
     setup.verify_rounds = recipe.verify_rounds;
     setup.leave = recipe.afterwards == Afterwards::leave;
+    setup.preflight = preflight_setup_of(board);
+    // The upper half of what the board's ordinal field holds.
+    if (board.ordinal) {
+        if (const FieldDescription* field = board.map.find(*board.ordinal)) {
+            setup.first_side_ordinal = field->highest_allowed() / 2 + 1;
+        }
+    }
     return setup;
 }
 

@@ -16,6 +16,9 @@ CodeSpace code_space_of(const BoardFile& board);
 CostModel cost_model_of(const BoardFile& board);
 MonitorNoise monitor_noise_of(const BoardFile& board);
 
+PreflightSetup preflight_setup_of(const BoardFile& board);
+bool counts(const BoardFile& board);  // the monitor counts where it is told to look
+
 // Bits of one dwell of the recipe on that board: the recipe's seconds at the board's bit rate,
 // rounded up to a power of two where the monitor takes its dwell as one.
 std::uint64_t dwell_bits_of(const BoardFile& board, const Recipe& recipe);

@@ -63,6 +63,12 @@ void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
                                 const std::vector<std::string_view>& strategy_names,
                                 Complaints& complaints);
 
+// Only what a log must be able to answer: dimensions and strategy. What a monitor could be told does
+// not matter where nothing is measured.
+void check_recipe_for_replay(const Recipe& recipe, const BoardFile& board,
+                             const std::vector<std::string_view>& strategy_names,
+                             Complaints& complaints);
+
 // "0,2-5" as lane numbers, ascending. On failure: empty, and `why` says what was expected.
 std::optional<std::vector<std::uint16_t>> parse_lanes(std::string_view text, std::string& why);
 

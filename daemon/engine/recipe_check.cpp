@@ -220,4 +220,12 @@ void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
     check.parameters();
 }
 
+void check_recipe_for_replay(const Recipe& recipe, const BoardFile& board,
+                             const std::vector<std::string_view>& strategy_names,
+                             Complaints& complaints) {
+    Check check(recipe, board, complaints);
+    check.dimensions();
+    check.strategy(strategy_names);
+}
+
 }  // namespace lanewright

@@ -45,6 +45,7 @@ void RunState::apply(const StoredEvent& stored) {
                        LaneState& lane = lanes[number(e.lane)];
                        lane.moved = true;
                        lane.settled.reset();
+                       lane.searched = lane.searched || e.stage == Stage::search;
                        intents_[{number(e.lane), e.ordinal}] = {e.stage, e.request.why};
                    },
                    [&](const ReadingTaken& e) {
@@ -52,7 +53,11 @@ void RunState::apply(const StoredEvent& stored) {
                        lanes[number(e.lane)].readings.push_back(
                            {e.ordinal, stage, why, e.reading, stored.at_ns});
                    },
-                   [&](const ReadingVoid& e) { ++lanes[number(e.lane)].void_count; },
+                   [&](const ReadingVoid& e) {
+                       LaneState& lane = lanes[number(e.lane)];
+                       ++lane.void_count;
+                       if (!e.changed_register.empty()) ++lane.codes_changed;
+                   },
                    [&](const LaneDecided& e) { lanes[number(e.lane)].decision = e.decision; },
                    [&](const LaneSettled& e) {
                        LaneState& lane = lanes[number(e.lane)];
@@ -60,8 +65,9 @@ void RunState::apply(const StoredEvent& stored) {
                        lane.settled = e.settlement;
                    },
                    [&](const LaneFinished& e) { lanes[number(e.lane)].finished = e; },
-                   [&](const RunResumed&) {
+                   [&](const RunResumed& e) {
                        ended.reset();
+                       resumed_by = e.pid;
                        ++resumptions;
                    },
                    [&](const RunEnded& e) {
@@ -78,8 +84,53 @@ void RunState::apply(const StoredEvent& stored) {
                        lane.last_written = e.codes;
                        lane.moved = false;
                    },
+                   [&](const PreflightBegun& e) { lanes[number(e.lane)].items_left = e.items; },
+                   [&](const PreflightItem& e) { take_item(e); },
+                   [&](const NoiseChosen& e) { lanes[number(e.lane)].noise = e; },
+                   [&](const LaneReset& e) { ++lanes[number(e.lane)].reset_count; },
                },
                stored.event);
+}
+
+void RunState::take_item(const PreflightItem& item) {
+    if (item.lane) std::erase(lanes[number(*item.lane)].items_left, item.name);
+    std::erase_if(preflight, [&](const PreflightItem& each) {
+        return each.name == item.name && each.lane == item.lane;
+    });
+    preflight.push_back(item);
+}
+
+const PreflightItem* RunState::item(const std::string& name, std::optional<Lane> lane) const {
+    const auto found = std::find_if(
+        preflight.begin(), preflight.end(),
+        [&](const PreflightItem& each) { return each.name == name && each.lane == lane; });
+    return found == preflight.end() ? nullptr : &*found;
+}
+
+const PreflightItem* RunState::measured_item(const std::string& name) const {
+    const auto found =
+        std::find_if(preflight.rbegin(), preflight.rend(), [&](const PreflightItem& each) {
+            return each.name == name && each.result != ItemResult::not_shown;
+        });
+    return found == preflight.rend() ? nullptr : &*found;
+}
+
+std::vector<ReferenceReading> reference_readings(const LaneState& lane,
+                                                 const MonitorNoise& declared, bool latched) {
+    const MonitorNoise& noise = lane.noise ? lane.noise->noise : declared;
+    std::vector<ReferenceReading> out;
+    const Reading* first = nullptr;
+    std::uint32_t searched = 0;
+    for (const LaneReadingRecord& record : lane.readings) {
+        if (record.stage == Stage::search) {
+            ++searched;
+            if (first == nullptr && record.reading.status == Status::open) first = &record.reading;
+        }
+        if (record.stage != Stage::reference || first == nullptr) continue;
+        out.push_back(
+            {searched, record.at_ns, significant_shift(*first, record.reading, noise, latched)});
+    }
+    return out;
 }
 
 bool RunState::complete(const std::vector<std::uint16_t>& run_lanes) const {

@@ -6,6 +6,7 @@
 #include <filesystem>
 #include <utility>
 
+#include "daemon/engine/preflight.hpp"
 #include "daemon/engine/version.hpp"
 
 namespace lanewright {
@@ -44,6 +45,7 @@ Manifest manifest_of(const TuneRequest& request, const Identity& identity) {
     manifest.seed = request.seed;
     manifest.tags = request.tags;
     manifest.condition = request.condition;
+    manifest.purpose = request.only_preflight ? Purpose::preflight : Purpose::tune;
     return manifest;
 }
 
@@ -74,9 +76,10 @@ struct Beginning {
 Beginning beginning_of(const TuneRequest& request, const Identity& identity, const Store& store) {
     Beginning out;
     out.manifest = manifest_of(request, identity);
-    if (request.anew) return out;
+    if (request.anew || request.only_preflight) return out;
     const std::vector<RunRow> rows = store.runs();
     for (auto row = rows.rbegin(); row != rows.rend(); ++row) {
+        if (row->manifest.purpose == Purpose::preflight) continue;  // it left no code behind
         if (!same_job(row->manifest, out.manifest)) {
             if (shares_lanes(row->manifest, out.manifest)) return out;
             continue;
@@ -85,6 +88,35 @@ Beginning beginning_of(const TuneRequest& request, const Identity& identity, con
         const RunState state = fold(history);
         if (state.ended && state.ended->ending == Ending::complete) return out;
         return {row->manifest, std::move(history), true};
+    }
+    return out;
+}
+
+// Readings of the one say what those of the other will be like.
+bool same_bench(const Manifest& one, const Manifest& other) {
+    return one.board_file.sha256 == other.board_file.sha256 && one.condition == other.condition &&
+           one.tags == other.tags && same_board(one.identity, other.identity);
+}
+
+// What earlier runs have measured of the board under these settings; of each item the newest, and
+// none where that one failed. Copies of still earlier ones are left out: they name their origin.
+std::vector<PreflightItem> known_items(const Manifest& manifest, const std::string& settings,
+                                       const Store& store) {
+    std::vector<PreflightItem> out;
+    std::vector<std::string> wanted = board_items();
+    const std::vector<RunRow> rows = store.runs();
+    for (auto row = rows.rbegin(); row != rows.rend() && !wanted.empty(); ++row) {
+        if (!same_bench(row->manifest, manifest)) continue;
+        std::vector<PreflightItem> items = store.preflight_items(row->id);
+        for (auto item = items.rbegin(); item != items.rend(); ++item) {
+            const auto name = std::find(wanted.begin(), wanted.end(), item->name);
+            const bool measured = item->from.empty() && item->result != ItemResult::not_shown;
+            if (name == wanted.end() || !measured || item->settings != settings) continue;
+            wanted.erase(name);
+            if (item->result == ItemResult::failed) continue;
+            item->from = row->id;
+            out.push_back(std::move(*item));
+        }
     }
     return out;
 }
@@ -162,6 +194,13 @@ Task<TuneOutcome> tune_board(TuneRequest request, Bench bench, Store* store, End
     plan.note.identity = *identity;
     plan.note.run = run;
     plan.note.store = absolute(store->path());
+    plan.preflight = request.preflight || request.only_preflight;
+    plan.only_preflight = request.only_preflight;
+    if (plan.preflight && !plan.only_preflight) {
+        const MarginWanted reading{
+            request.recipe.search_error_ratio, dwell_bits_of(request.board, request.recipe), {}};
+        plan.known = known_items(beginning.manifest, settings_of(reading), *store);
+    }
     plan.manifest = std::move(beginning.manifest);
     plan.board = std::move(request.board);
     plan.recipe = std::move(request.recipe);

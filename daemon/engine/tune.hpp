@@ -22,7 +22,9 @@ struct TuneRequest {
     std::uint64_t seed = 1;
     std::map<std::string, std::string> tags;
     std::string condition;
-    bool anew = false;  // never resume
+    bool anew = false;            // never resume
+    bool preflight = true;        // look whether the bench is fit to measure on, first
+    bool only_preflight = false;  // measure all of the preflight anew, and search nothing
 };
 
 struct TuneOutcome {

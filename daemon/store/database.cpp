@@ -1,8 +1,10 @@
 #include "daemon/store/database.hpp"
 
 #include <SQLiteCpp/SQLiteCpp.h>
+#include <fcntl.h>
 #include <sqlite3.h>
 #include <sys/vfs.h>
+#include <unistd.h>
 
 #include <array>
 #include <cstdlib>
@@ -20,7 +22,7 @@ using nlohmann::json;
 namespace {
 
 constexpr int application_id = 0x4C4E5752;  // "LNWR"
-constexpr int schema_version = 1;
+constexpr int schema_version = 2;
 
 constexpr const char* schema = R"sql(
 CREATE TABLE runs (
@@ -61,8 +63,16 @@ CREATE TABLE readings (
     cost_s REAL NOT NULL,
     counts TEXT NOT NULL,
     wire TEXT NOT NULL,
+    slopes TEXT NOT NULL DEFAULT 'null',
+    telemetry TEXT NOT NULL DEFAULT '[]',
     UNIQUE (run, lane, ordinal)
 ) STRICT;
+)sql";
+
+// From format 1: slopes and telemetry of a reading, and kinds of event that it did not know.
+constexpr const char* from_format_1 = R"sql(
+ALTER TABLE readings ADD COLUMN slopes TEXT NOT NULL DEFAULT 'null';
+ALTER TABLE readings ADD COLUMN telemetry TEXT NOT NULL DEFAULT '[]';
 )sql";
 
 // f_type of file systems on which SQLite's locks cannot be relied upon (statfs(2), linux/magic.h).
@@ -106,6 +116,32 @@ void create_schema(SQLite::Database& db) {
     transaction.commit();
 }
 
+// A whole copy beside the store, under a name that nothing has yet; durable on return.
+void copy_before_migration(SQLite::Database& db, const std::string& path, int version) {
+    std::string copy = path + ".format" + std::to_string(version);
+    for (int n = 2; fs::exists(copy); ++n) {
+        copy = path + ".format" + std::to_string(version) + "." + std::to_string(n);
+    }
+    SQLite::Statement vacuum(db, "VACUUM INTO ?");
+    vacuum.bind(1, copy);
+    vacuum.exec();
+    const int file = ::open(copy.c_str(), O_RDONLY | O_CLOEXEC);
+    const bool synced = file >= 0 && ::fsync(file) == 0;
+    if (file >= 0) ::close(file);
+    if (!synced) {
+        throw StoreError("the store " + path + " has an older format and the copy " + copy +
+                         " cannot be made durable before it is brought up to date. Check the disk");
+    }
+}
+
+void migrate(SQLite::Database& db, const std::string& path, int version) {
+    copy_before_migration(db, path, version);
+    SQLite::Transaction transaction(db, SQLite::TransactionBehavior::IMMEDIATE);
+    db.exec(from_format_1);
+    db.exec("PRAGMA user_version = " + std::to_string(schema_version));
+    transaction.commit();
+}
+
 void check_schema(SQLite::Database& db, const std::string& path, Database::Mode mode) {
     const int id = pragma(db, "application_id");
     const int version = pragma(db, "user_version");
@@ -120,6 +156,7 @@ void check_schema(SQLite::Database& db, const std::string& path, Database::Mode 
                            ", this version reads up to " + std::to_string(schema_version) +
                            ". Use a newer version of the program");
     }
+    if (version < schema_version && mode == Database::Mode::read_write) migrate(db, path, version);
 }
 
 struct MeasuredColumns {
@@ -136,7 +173,7 @@ constexpr std::array<MeasuredColumns, 6> measured_columns{{{&Reading::up_mv, 0},
 constexpr const char* insert_reading = R"sql(
 INSERT INTO readings VALUES (?,?,?,?,?,?,?,?,
   ?,?,?, ?,?,?, ?,?,?, ?,?,?, ?,?,?, ?,?,?,
-  ?,?,?,?,?,?,?,?,?)
+  ?,?,?,?,?,?,?,?,?,?,?)
 )sql";
 
 void bind_measured(SQLite::Statement& statement, int at, const std::optional<Measured>& measured) {
@@ -179,17 +216,22 @@ void insert_reading_row(SQLite::Statement& statement, const NewEvent& added) {
     statement.bind(33, reading.cost_s);
     statement.bind(34, to_json_value(reading.counts).dump());
     statement.bind(35, to_json_value(taken.wire).dump());
+    statement.bind(36, to_json_value(reading.slopes).dump());
+    statement.bind(37, to_json_value(reading.telemetry).dump());
     statement.exec();
 }
 
-// Columns of readings from `codes` on, joined behind seq, at_ns, kind, body.
+// Columns of readings from `codes` on, joined behind seq, at_ns, kind, body. A store of format 1 is
+// read as it is where it may not be written to.
 constexpr const char* select_events = R"sql(
 SELECT e.seq, e.at_ns, e.kind, e.body, r.codes, r.condition, r.status,
   r.up_mv, r.up_se_mv, r.up_bound, r.down_mv, r.down_se_mv, r.down_bound,
   r.left_ui, r.left_se_ui, r.left_bound, r.right_ui, r.right_se_ui, r.right_bound,
   r.height_mv, r.height_se_mv, r.height_bound, r.width_ui, r.width_se_ui, r.width_bound,
   r.centred_assumed, r.basis, r.error_definition, r.error_ratio, r.centre_error_ratio,
-  r.bit_count, r.cost_s, r.counts, r.wire
+  r.bit_count, r.cost_s, r.counts, r.wire)sql";
+constexpr const char* select_columns_of_format_2 = ", r.slopes, r.telemetry";
+constexpr const char* select_where = R"sql(
 FROM events e LEFT JOIN readings r ON r.event = e.seq
 WHERE e.run = ? AND e.seq > ? ORDER BY e.seq LIMIT ?
 )sql";
@@ -209,6 +251,9 @@ void fill_reading(const SQLite::Statement& row, ReadingTaken& taken) {
     reading.cost_s = row.getColumn(31).getDouble();
     reading.counts = counts_from(json::parse(row.getColumn(32).getString()));
     taken.wire = wire_from(json::parse(row.getColumn(33).getString()));
+    if (row.getColumnCount() <= 34) return;
+    reading.slopes = slopes_from(json::parse(row.getColumn(34).getString()));
+    reading.telemetry = telemetry_from(json::parse(row.getColumn(35).getString()));
 }
 
 [[noreturn]] void rethrow(const std::string& path, const SQLite::Exception& error) {
@@ -350,7 +395,10 @@ std::vector<StoredEvent> Database::events(const RunId& run, EventSeq after,
                                           std::size_t at_most) const {
     try {
         std::vector<StoredEvent> out;
-        SQLite::Statement query(*db_, select_events);
+        const bool format_1 = pragma(*db_, "user_version") == 1;
+        SQLite::Statement query(*db_, std::string(select_events) +
+                                          (format_1 ? "" : select_columns_of_format_2) +
+                                          select_where);
         query.bind(1, run);
         query.bind(2, after);
         query.bind(3, static_cast<std::int64_t>(at_most));
@@ -374,6 +422,25 @@ std::vector<StoredEvent> Database::events(const RunId& run, EventSeq after,
         rethrow(path_, error);
     } catch (const json::exception& error) {
         throw BadStoreData("the store " + path_ + " holds a damaged reading: " + error.what());
+    }
+}
+
+std::vector<PreflightItem> Database::preflight_items(const RunId& run) const {
+    try {
+        std::vector<PreflightItem> out;
+        SQLite::Statement query(*db_,
+                                "SELECT kind, body FROM events WHERE run = ? AND kind = ? "
+                                "ORDER BY seq");
+        query.bind(1, run);
+        query.bind(2, kind_of(PreflightItem{}));
+        while (query.executeStep()) {
+            Event event =
+                decode_body(query.getColumn(0).getString(), query.getColumn(1).getString());
+            out.push_back(std::move(std::get<PreflightItem>(event)));
+        }
+        return out;
+    } catch (const SQLite::Exception& error) {
+        rethrow(path_, error);
     }
 }
 

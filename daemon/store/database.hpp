@@ -43,12 +43,16 @@ class Database {
     Database(const Database&) = delete;
     Database& operator=(const Database&) = delete;
 
+    const std::string& path() const { return path_; }
+
     void add_run(const Manifest& manifest);             // durable on return
     void append(const std::vector<NewEvent*>& events);  // one transaction, durable on return
     std::vector<RunRow> runs() const;                   // oldest first
     // A whole id, a prefix of just one id, or "latest". StoreError says which runs there are.
     RunRow find_run(const std::string& id_or_prefix) const;
     std::vector<StoredEvent> events(const RunId& run, EventSeq after, std::size_t at_most) const;
+    // What the run's preflight concluded, in order; without its readings.
+    std::vector<PreflightItem> preflight_items(const RunId& run) const;
     void checkpoint();
 
   private:

@@ -12,9 +12,17 @@ using nlohmann::json;
 
 namespace {
 
-constexpr auto stage_words = words<Stage>({{Stage::search, "search"}, {Stage::compare, "compare"}});
-constexpr auto settlement_words =
-    words<Settlement>({{Settlement::decided, "decided"}, {Settlement::restored, "restored"}});
+constexpr auto stage_words = words<Stage>({{Stage::search, "search"},
+                                           {Stage::compare, "compare"},
+                                           {Stage::preflight, "preflight"},
+                                           {Stage::reference, "reference"}});
+constexpr auto settlement_words = words<Settlement>({{Settlement::decided, "decided"},
+                                                     {Settlement::restored, "restored"},
+                                                     {Settlement::given_up, "given_up"}});
+constexpr auto result_words = words<ItemResult>({{ItemResult::passed, "passed"},
+                                                 {ItemResult::failed, "failed"},
+                                                 {ItemResult::noted, "noted"},
+                                                 {ItemResult::not_shown, "not_shown"}});
 constexpr auto outcome_words = words<LaneOutcome>({{LaneOutcome::tuned, "tuned"},
                                                    {LaneOutcome::unchanged, "unchanged"},
                                                    {LaneOutcome::failed, "failed"}});
@@ -27,8 +35,9 @@ constexpr auto status_words = words<Status>({{Status::open, "open"},
                                              {Status::no_lock, "no_lock"},
                                              {Status::saturated, "saturated"},
                                              {Status::void_reading, "void"}});
-constexpr auto definition_words = words<ErrorDefinition>(
-    {{ErrorDefinition::pattern, "pattern"}, {ErrorDefinition::decision, "decision"}});
+constexpr auto definition_words = words<ErrorDefinition>({{ErrorDefinition::pattern, "pattern"},
+                                                          {ErrorDefinition::decision, "decision"},
+                                                          {ErrorDefinition::unknown, "unknown"}});
 constexpr auto basis_words =
     words<Basis>({{Basis::counted, "counted"}, {Basis::extrapolated, "extrapolated"}});
 
@@ -52,6 +61,31 @@ T with_reading_key(const json& body) {
     event.ordinal = body.at("ordinal").get<std::uint32_t>();
     event.attempt = body.at("attempt").get<std::uint32_t>();
     return event;
+}
+
+json item_json(const PreflightItem& item) {
+    json body{{"name", item.name},         {"result", result_words.name(item.result)},
+              {"found", item.found},       {"expected", item.expected},
+              {"advice", item.advice},     {"values", item.values},
+              {"settings", item.settings}, {"from", item.from}};
+    if (item.lane) body["lane"] = number(*item.lane);
+    if (item.codes) body["codes"] = to_json_value(*item.codes);
+    return body;
+}
+
+PreflightItem item_from(const json& body) {
+    PreflightItem item;
+    if (body.contains("lane")) item.lane = lane_from(body);
+    body.at("name").get_to(item.name);
+    item.result = result_words.value(body.at("result").get<std::string>());
+    body.at("found").get_to(item.found);
+    body.at("expected").get_to(item.expected);
+    body.at("advice").get_to(item.advice);
+    body.at("values").get_to(item.values);
+    body.at("settings").get_to(item.settings);
+    body.at("from").get_to(item.from);
+    if (body.contains("codes")) item.codes = codes_from(body.at("codes"));
+    return item;
 }
 
 // One codec an event: its stored name, to and from JSON.
@@ -90,11 +124,15 @@ const Codec codecs[] = {
      [](const Event& e) {
          json body = reading_key(as<ReadingVoid>(e));
          body["cause"] = as<ReadingVoid>(e).cause;
+         if (const std::string& reg = as<ReadingVoid>(e).changed_register; !reg.empty()) {
+             body["changed_register"] = reg;
+         }
          return body;
      },
      [](const json& b) -> Event {
          auto event = with_reading_key<ReadingVoid>(b);
          event.cause = b.at("cause").get<std::string>();
+         event.changed_register = b.value("changed_register", "");
          return event;
      }},
     {"lane_decided",
@@ -170,6 +208,30 @@ const Codec codecs[] = {
          return CodesWritten{lane_from(b), codes_from(b.at("codes")),
                              b.at("why").get<std::string>()};
      }},
+    {"preflight_item", [](const Event& e) { return item_json(as<PreflightItem>(e)); },
+     [](const json& b) -> Event { return item_from(b); }},
+    {"preflight_begun",
+     [](const Event& e) {
+         json body = lane_json(as<PreflightBegun>(e).lane);
+         body["items"] = as<PreflightBegun>(e).items;
+         return body;
+     },
+     [](const json& b) -> Event {
+         return PreflightBegun{lane_from(b), b.at("items").get<std::vector<std::string>>()};
+     }},
+    {"noise_chosen",
+     [](const Event& e) {
+         json body = lane_json(as<NoiseChosen>(e).lane);
+         body["noise"] = to_json_value(as<NoiseChosen>(e).noise);
+         body["from"] = as<NoiseChosen>(e).from;
+         return body;
+     },
+     [](const json& b) -> Event {
+         return NoiseChosen{lane_from(b), noise_from(b.at("noise")),
+                            b.at("from").get<std::string>()};
+     }},
+    {"lane_reset", [](const Event& e) { return lane_json(as<LaneReset>(e).lane); },
+     [](const json& b) -> Event { return LaneReset{lane_from(b)}; }},
 };
 static_assert(std::size(codecs) == std::variant_size_v<Event>, "one codec an event, in order");
 
@@ -222,6 +284,9 @@ const char* name_of(LaneOutcome outcome) {
 }
 const char* name_of(Ending ending) {
     return ending_words.name(ending);
+}
+const char* name_of(ItemResult result) {
+    return result_words.name(result);
 }
 const char* name_of(Status status) {
     return status_words.name(status);

@@ -5,6 +5,7 @@
 // Threads:   no shared state.
 
 #include <cstdint>
+#include <map>
 #include <optional>
 #include <string>
 #include <variant>
@@ -19,13 +20,15 @@ namespace lanewright {
 using RunId = std::string;      // unique across benches: time and 32 random bits
 using EventSeq = std::int64_t;  // row number in its store
 
-// Which part of a lane's job a reading belongs to.
-enum class Stage : std::uint8_t { search, compare };
+// Which part of a lane's job a reading belongs to. Readings of the last two are no business of the
+// strategy's: neither shown to it nor charged to its budget.
+enum class Stage : std::uint8_t { search, compare, preflight, reference };
 
 // What the chip's codes were set to for good, and why.
 enum class Settlement : std::uint8_t {
-    decided,  // the decided codes, left in place
-    restored  // the codes found before the run
+    decided,   // the decided codes, left in place
+    restored,  // the codes found before the run
+    given_up   // something else writes there: left as it is, and not written to any more
 };
 
 enum class LaneOutcome : std::uint8_t { tuned, unchanged, failed };
@@ -62,6 +65,7 @@ struct ReadingVoid {
     Lane lane{};
     std::uint32_t ordinal = 0, attempt = 0;
     std::string cause;
+    std::string changed_register;  // where the codes changed without us: which one
 };
 
 struct LaneDecided {
@@ -107,8 +111,48 @@ struct CodesWritten {
     std::string why;
 };
 
+// What came of one item of the preflight.
+enum class ItemResult : std::uint8_t {
+    passed,
+    failed,    // the run stops
+    noted,     // the run goes on otherwise: `found` says how
+    not_shown  // could not be found out here; `found` says why
+};
+
+struct PreflightItem {
+    std::optional<Lane> lane;  // empty: of the whole board
+    std::string name;          // reference_clock, repeatability, ...
+    ItemResult result = ItemResult::not_shown;
+    std::string found, expected, advice;   // sentences for people; advice: what to do
+    std::map<std::string, double> values;  // by name with unit: height_sigma_mv, ...
+    std::optional<Codes> codes;            // at which it was measured
+    std::string settings;                  // under which it was: error ratio and dwell
+    RunId from;                            // the run that measured it; empty: this one
+    bool operator==(const PreflightItem&) const = default;
+};
+
+// The lane is to measure these items now, each by a procedure of its own, from their beginning.
+struct PreflightBegun {
+    Lane lane{};
+    std::vector<std::string> items;
+};
+
+// The noise that the lane's strategy and its verdict are told, as measured by the preflight.
+struct NoiseChosen {
+    Lane lane{};
+    MonitorNoise noise;
+    RunId from;  // the run that measured it; empty: this one
+};
+
+// The board has reset behind our back: the lane's codes are gone, and its reference is to be read
+// again before anything else counts.
+struct LaneReset {
+    Lane lane{};
+};
+
 using Event = std::variant<Identified, LaneSaved, Intent, ReadingTaken, ReadingVoid, LaneDecided,
-                           LaneSettled, LaneFinished, RunResumed, RunEnded, CodesWritten>;
+                           LaneSettled, LaneFinished, RunResumed, RunEnded, CodesWritten,
+                           PreflightItem, PreflightBegun, NoiseChosen, LaneReset>;
 
 struct StoredEvent {
     EventSeq seq = 0;
@@ -130,6 +174,7 @@ const char* name_of(Stage stage);
 const char* name_of(Settlement settlement);
 const char* name_of(LaneOutcome outcome);
 const char* name_of(Ending ending);
+const char* name_of(ItemResult result);
 const char* name_of(Status status);
 const char* name_of(ErrorDefinition definition);
 const char* name_of(Basis basis);

@@ -4,6 +4,7 @@
 // Threads:   one thread at a time per object.
 // Errors:    Cause::busy names the holder's pid; Cause::no_permission; Cause::io.
 
+#include <cstdint>
 #include <string>
 
 #include "drivers/faults/fault.hpp"
@@ -27,6 +28,10 @@ class FileLock {
     explicit FileLock(int descriptor) : descriptor_(descriptor) {}
     int descriptor_ = -1;
 };
+
+// The pid of the process that holds the lock at present; 0: nobody does. Asks the kernel's list, so
+// that a look never gets in the way of who takes the lock next.
+std::int64_t lock_holder(const std::string& path);
 
 // The value of a "key=value" line of such a file, or empty.
 std::string lock_file_value(const std::string& path, const std::string& key);

@@ -47,6 +47,30 @@ SourceFile file_from(const json& value) {
             value.at("text").get<std::string>()};
 }
 
+json import_json(const Import& import) {
+    return {{"columns", file_json(import.columns)},
+            {"readings_path", import.readings_path},
+            {"readings_sha256", import.readings_sha256},
+            {"row_count", import.row_count},
+            {"rejected_count", import.rejected_count},
+            {"pattern", import.pattern},
+            {"condition_known", import.condition_known},
+            {"error_ratio_known", import.error_ratio_known}};
+}
+
+Import import_from(const json& value) {
+    Import out;
+    out.columns = file_from(value.at("columns"));
+    value.at("readings_path").get_to(out.readings_path);
+    value.at("readings_sha256").get_to(out.readings_sha256);
+    value.at("row_count").get_to(out.row_count);
+    value.at("rejected_count").get_to(out.rejected_count);
+    value.at("pattern").get_to(out.pattern);
+    value.at("condition_known").get_to(out.condition_known);
+    value.at("error_ratio_known").get_to(out.error_ratio_known);
+    return out;
+}
+
 }  // namespace
 
 std::int64_t utc_now_ns() {
@@ -100,26 +124,28 @@ std::string sha256_hex(const std::string& text) {
 }
 
 std::string encode_manifest(const Manifest& m) {
-    const json out{{"run", m.run},
-                   {"started_ns", m.started_ns},
-                   {"zone", m.zone},
-                   {"version", m.version},
-                   {"git_hash", m.git_hash},
-                   {"build", m.build},
-                   {"cpu", m.cpu},
-                   {"host", m.host},
-                   {"pid", m.pid},
-                   {"board_file", file_json(m.board_file)},
-                   {"recipe_file", file_json(m.recipe_file)},
-                   {"board", m.board},
-                   {"recipe", m.recipe},
-                   {"link", m.link},
-                   {"identity", to_json_value(m.identity)},
-                   {"lanes", m.lanes},
-                   {"waves", m.waves},
-                   {"seed", m.seed},
-                   {"tags", m.tags},
-                   {"condition", m.condition}};
+    json out{{"run", m.run},
+             {"started_ns", m.started_ns},
+             {"zone", m.zone},
+             {"version", m.version},
+             {"git_hash", m.git_hash},
+             {"build", m.build},
+             {"cpu", m.cpu},
+             {"host", m.host},
+             {"pid", m.pid},
+             {"board_file", file_json(m.board_file)},
+             {"recipe_file", file_json(m.recipe_file)},
+             {"board", m.board},
+             {"recipe", m.recipe},
+             {"link", m.link},
+             {"identity", to_json_value(m.identity)},
+             {"lanes", m.lanes},
+             {"waves", m.waves},
+             {"seed", m.seed},
+             {"tags", m.tags},
+             {"condition", m.condition}};
+    if (m.purpose == Purpose::preflight) out["purpose"] = "preflight";
+    if (m.imported) out["imported"] = import_json(*m.imported);
     return out.dump(-1, ' ', false, json::error_handler_t::replace);
 }
 
@@ -147,6 +173,8 @@ Manifest decode_manifest(const std::string& text) {
         value.at("seed").get_to(m.seed);
         value.at("tags").get_to(m.tags);
         value.at("condition").get_to(m.condition);
+        if (value.value("purpose", "tune") == "preflight") m.purpose = Purpose::preflight;
+        if (value.contains("imported")) m.imported = import_from(value.at("imported"));
         return m;
     } catch (const json::exception& error) {
         throw BadStoreData(std::string("a run's manifest cannot be read: ") + error.what());

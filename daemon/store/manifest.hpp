@@ -6,6 +6,7 @@
 
 #include <cstdint>
 #include <map>
+#include <optional>
 #include <string>
 #include <vector>
 
@@ -17,6 +18,22 @@ struct SourceFile {
     std::string path;    // as given
     std::string sha256;  // of the text
     std::string text;    // whole
+};
+
+// Of a run whose readings were logged by other means: what they were made from. Such a run has no
+// board to go back to.
+struct Import {
+    SourceFile columns;                          // the column map, whole
+    std::string readings_path, readings_sha256;  // the file of margins, as given
+    std::uint64_t row_count = 0, rejected_count = 0;
+    std::string pattern;  // "unknown" where nobody can say
+    bool condition_known = false, error_ratio_known = false;
+};
+
+// What a run was for.
+enum class Purpose : std::uint8_t {
+    tune,
+    preflight  // `check --measure`: nothing is searched, the codes are put back
 };
 
 struct Manifest {
@@ -34,6 +51,8 @@ struct Manifest {
     std::uint64_t seed = 0;
     std::map<std::string, std::string> tags;
     std::string condition;  // empty: as found
+    Purpose purpose = Purpose::tune;
+    std::optional<Import> imported;
 };
 
 // UTC now and the local offset, for the manifest and for stamps.

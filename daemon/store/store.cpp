@@ -36,7 +36,7 @@ Store::~Store() = default;
 Result<std::unique_ptr<Store>> Store::open(const std::string& path, TimeSource& time) {
     try {
         prepare_store_folder(path);
-        auto lock = FileLock::take(path + ".lock", "the store " + path);
+        auto lock = FileLock::take(lock_of(path), "the store " + path);
         if (!lock) return lock.error();
         if (auto described = lock->describe("store=" + path + "\n"); !described) {
             return described.error();

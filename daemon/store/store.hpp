@@ -27,6 +27,8 @@ class Store : public Journal {
     ~Store() override;
 
     const std::string& path() const { return path_; }
+    // The pid of the process that has the store open for writing; 0: none.
+    static std::int64_t holder(const std::string& path) { return lock_holder(lock_of(path)); }
 
     Task<void> add_run(Manifest manifest);
     Task<std::vector<StoredEvent>> append(RunId run, std::vector<Event> events) override;
@@ -35,8 +37,12 @@ class Store : public Journal {
     std::vector<RunRow> runs() const { return database_->runs(); }
     RunRow find_run(const std::string& id) const { return database_->find_run(id); }
     std::vector<StoredEvent> events(const RunId& run) const;
+    std::vector<PreflightItem> preflight_items(const RunId& run) const {
+        return database_->preflight_items(run);
+    }
 
   private:
+    static std::string lock_of(const std::string& path) { return path + ".lock"; }
     struct Pending;
     Store(std::string path, FileLock lock, std::unique_ptr<Database> database, TimeSource& time);
     void commit_pending();

@@ -50,6 +50,7 @@ json to_json_value(const Request& request) {
         }
         out["looks"] = std::move(looks);
     }
+    if (request.wait_s != 0) out["wait_s"] = request.wait_s;
     return out;
 }
 
@@ -74,6 +75,7 @@ Request request_from(const json& value) {
         for (const json& look : value.at("looks")) wanted.looks.push_back(look_from(look));
         out.what = std::move(wanted);
     }
+    out.wait_s = value.value("wait_s", 0.0);
     return out;
 }
 
@@ -134,6 +136,24 @@ json to_json_value(const Decision& decision) {
             {"bench_s", decision.bench_s}};
 }
 
+json to_json_value(const MonitorNoise& noise) {
+    return {{"height_step_mv", noise.height_step_mv},
+            {"width_step_ui", noise.width_step_ui},
+            {"height_sigma_mv", noise.height_sigma_mv},
+            {"width_sigma_ui", noise.width_sigma_ui},
+            {"height_nonlinearity_mv", noise.height_nonlinearity_mv},
+            {"width_nonlinearity_ui", noise.width_nonlinearity_ui}};
+}
+
+MonitorNoise noise_from(const json& value) {
+    return {value.at("height_step_mv").get<double>(),
+            value.at("width_step_ui").get<double>(),
+            value.at("height_sigma_mv").get<double>(),
+            value.at("width_sigma_ui").get<double>(),
+            value.at("height_nonlinearity_mv").get<double>(),
+            value.at("width_nonlinearity_ui").get<double>()};
+}
+
 Decision decision_from(const json& value) {
     Decision out;
     out.codes = codes_from(value.at("codes"));
@@ -159,6 +179,58 @@ std::vector<Count> counts_from(const json& value) {
     for (const json& entry : value) {
         out.push_back(
             {look_from(entry.at(0)), entry.at(1).get<std::uint64_t>(), entry.at(2).get<bool>()});
+    }
+    return out;
+}
+
+namespace {
+
+struct SlopeName {
+    Measured EdgeSlopes::* member;
+    const char* name;
+};
+constexpr SlopeName slope_names[] = {{&EdgeSlopes::up_mv, "up_mv"},
+                                     {&EdgeSlopes::down_mv, "down_mv"},
+                                     {&EdgeSlopes::left_ui, "left_ui"},
+                                     {&EdgeSlopes::right_ui, "right_ui"}};
+
+}  // namespace
+
+// Each as [value, standard error, bound], the bound as in the columns of a reading.
+json to_json_value(const std::optional<EdgeSlopes>& slopes) {
+    if (!slopes) return nullptr;
+    json out = json::object();
+    for (const auto& [member, name] : slope_names) {
+        const Measured& slope = *slopes.*member;
+        out[name] = {slope.value, slope.std_error, static_cast<int>(slope.bound)};
+    }
+    return out;
+}
+
+std::optional<EdgeSlopes> slopes_from(const json& value) {
+    if (value.is_null()) return std::nullopt;
+    EdgeSlopes out;
+    for (const auto& [member, name] : slope_names) {
+        const json& slope = value.at(name);
+        const int bound = slope.at(2).get<int>();
+        if (bound < 0 || bound > 2) throw BadStoreData("a slope holds an unknown bound");
+        out.*member = {slope.at(0).get<double>(), slope.at(1).get<double>(),
+                       static_cast<Bound>(bound)};
+    }
+    return out;
+}
+
+// A list, as the board file's order is kept.
+json to_json_value(const std::vector<Telemetry>& telemetry) {
+    json out = json::array();
+    for (const Telemetry& each : telemetry) out.push_back({each.name, each.value});
+    return out;
+}
+
+std::vector<Telemetry> telemetry_from(const json& value) {
+    std::vector<Telemetry> out;
+    for (const json& each : value) {
+        out.push_back({each.at(0).get<std::string>(), each.at(1).get<double>()});
     }
     return out;
 }

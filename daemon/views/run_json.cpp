@@ -4,6 +4,9 @@
 #include <nlohmann/json.hpp>
 
 #include "daemon/store/value_json.hpp"
+#include "daemon/views/preflight_views.hpp"
+#include "daemon/views/replay_views.hpp"
+#include "daemon/views/telemetry_views.hpp"
 
 namespace lanewright {
 
@@ -14,6 +17,10 @@ namespace {
 // JSON has no infinity: a limit that is not known is null.
 json number_or_null(double value) {
     return std::isfinite(value) ? json(value) : json(nullptr);
+}
+
+json number_or_null(const std::optional<double>& value) {
+    return value ? number_or_null(*value) : json(nullptr);
 }
 
 // An edge of a closed eye is known as "at most" only: no value was measured.
@@ -38,10 +45,11 @@ json opening(const std::optional<Measured>& whole, const std::optional<Measured>
     return nullptr;
 }
 
-json margin_json(const std::optional<Margin>& margin) {
+json margin_json(const RunView& view, const std::optional<Margin>& margin) {
     if (!margin) return nullptr;
     const Reading& reading = margin->reading;
     const Score& score = margin->score;
+    const Systematic systematic = systematic_of(view.board, reading);
     json out{{"status", name_of(reading.status)},
              {"up_mv", value_of(reading.up_mv)},
              {"up_se_mv", error_of(reading.up_mv)},
@@ -53,10 +61,12 @@ json margin_json(const std::optional<Margin>& margin) {
              {"right_se_ui", error_of(reading.right_ui)},
              {"height_mv", opening(reading.height_mv, reading.up_mv, reading.down_mv)},
              {"width_ui", opening(reading.width_ui, reading.left_ui, reading.right_ui)},
+             {"height_systematic_mv", number_or_null(systematic.height_mv)},
+             {"width_systematic_ui", number_or_null(systematic.width_ui)},
              {"score", score.bound == Bound::at_most ? json(nullptr) : number_or_null(score.value)},
              {"score_low", number_or_null(score.low)},
              {"score_high", number_or_null(score.high)},
-             {"basis", name_of(reading.basis)},
+             {"basis", name_of(score.basis)},
              {"error_ratio", reading.error_ratio},
              {"error_definition", name_of(reading.error_definition)}};
     if (reading.centred_assumed) out["centred"] = "assumed";
@@ -111,18 +121,25 @@ json lane_json(const RunView& view, const LaneResult& lane) {
              {"left", lane.left ? json(name_of(*lane.left)) : json(nullptr)},
              {"former_codes", codes_or_null(view.space, lane.former)},
              {"codes", codes_or_null(view.space, lane.decided)},
-             {"before", margin_json(lane.before)},
-             {"after", margin_json(lane.after)},
+             {"before", margin_json(view, lane.before)},
+             {"after", margin_json(view, lane.after)},
              {"response", response_json(lane.response)},
              {"reading_count", lane.reading_count},
+             {"side_reading_count", lane.side_reading_count},
              {"void_count", lane.void_count},
              {"bit_count", lane.bit_count},
              {"bench_s", lane.bench_s},
+             {"side_bench_s", lane.side_bench_s},
              {"reason", lane.reason},
              {"notes", lane.notes}};
     if (lane.judgement && lane.judgement->verdict == Verdict::undecided) {
         out["deciding_bench_s"] =
             lane.judgement->deciding_s ? json(*lane.judgement->deciding_s) : json(nullptr);
+    }
+    if (const auto known = view.state.lanes.find(lane.lane); known != view.state.lanes.end()) {
+        out["noise"] = noise_json(view, known->second);
+        out["reference"] = reference_json(view, known->second);
+        out["telemetry"] = telemetry_json(known->second);
     }
     if (lane.judgement) out["verdict_reason"] = lane.judgement->reason;
     return out;
@@ -135,7 +152,7 @@ json run_json(const RunView& view) {
     for (const LaneResult& lane : lanes) lane_list.push_back(lane_json(view, lane));
     json out{{"format", "lanewright-run/1"},
              {"run", manifest.run},
-             {"status", run_status(view.state)},
+             {"status", run_status(view)},
              {"started", iso8601(manifest.started_ns, manifest.zone)},
              {"board", manifest.board},
              {"simulated", manifest.identity.simulated},
@@ -147,9 +164,20 @@ json run_json(const RunView& view) {
              {"bench_s", bench_s_of(lanes)},
              {"wall_s", view.state.wall_s},
              {"link", link_json(view.state.link)},
+             {"preflight", preflight_json(view)},
              {"lanes", std::move(lane_list)}};
     if (view.state.ended && !view.state.ended->reason.empty()) {
         out["ending"] = view.state.ended->reason;
+    }
+    if (manifest.imported) {
+        const Import& from = *manifest.imported;
+        out["imported"] = {{"readings", from.readings_path},
+                           {"sha256", from.readings_sha256},
+                           {"columns", from.columns.path},
+                           {"pattern", from.pattern},
+                           {"row_count", from.row_count},
+                           {"rejected_count", from.rejected_count},
+                           {"unknown", unknown_of(manifest, view.state)}};
     }
     return out;
 }
@@ -162,11 +190,12 @@ json run_summary_json(const RunView& view) {
         if (lane.outcome) ++finished;
     }
     return {{"run", view.manifest.run},
-            {"status", run_status(view.state)},
+            {"status", run_status(view)},
             {"started", iso8601(view.manifest.started_ns, view.manifest.zone)},
             {"board", view.manifest.board},
             {"simulated", view.manifest.identity.simulated},
             {"recipe", view.manifest.recipe},
+            {"purpose", view.manifest.purpose == Purpose::preflight ? "preflight" : "tune"},
             {"seed", view.manifest.seed},
             {"tags", view.manifest.tags},
             {"lane_count", lanes.size()},

@@ -4,7 +4,11 @@
 #include <cstdio>
 #include <sstream>
 
+#include "daemon/engine/lane_setup.hpp"
 #include "daemon/store/store_error.hpp"
+#include "daemon/views/preflight_views.hpp"
+#include "daemon/views/replay_views.hpp"
+#include "daemon/views/telemetry_views.hpp"
 
 namespace lanewright {
 
@@ -86,23 +90,35 @@ std::string verdict_cell(const LaneResult& lane, bool colour) {
 
 // As it is where it fits, else broken at spaces.
 std::string fitted(const std::string& line) {
-    return line.size() <= 80 ? line + "\n" : wrapped(line, "  ");
+    const std::string shown = printable(line);
+    return shown.size() <= 80 ? shown + "\n" : wrapped(shown, "  ");
 }
 
 std::string head_of(const RunView& view) {
     const Manifest& manifest = view.manifest;
-    std::string out = "run " + manifest.run + "  " + run_status(view.state) + "\n";
+    std::string out = "run " + manifest.run + "  " + run_status(view) + "\n";
     out +=
         fitted("board " + manifest.board + "  recipe " + manifest.recipe + "  seed " +
                std::to_string(manifest.seed) + "  " + iso8601(manifest.started_ns, manifest.zone));
     if (!manifest.condition.empty()) out += fitted("condition " + manifest.condition);
     for (const auto& [key, value] : manifest.tags) out += fitted("tag " + key + "=" + value);
     const Required& required = view.recipe.required;
-    out += format("required %g mV x %g UI at error ratio %g", required.height_mv, required.width_ui,
-                  required.error_ratio) +
-           "\n";
+    if (manifest.purpose == Purpose::preflight) {
+        out += "preflight alone: nothing is searched, all codes are put back\n";
+    } else {
+        out += format("required %g mV x %g UI at error ratio %g", required.height_mv,
+                      required.width_ui, required.error_ratio) +
+               "\n";
+    }
     if (manifest.identity.simulated) {
         out += "SIMULATED BOARD: these results prove nothing about silicon\n";
+    }
+    if (manifest.imported) {
+        const std::string unknown = unknown_of(manifest, view.state);
+        out += wrapped("IMPORTED from " + manifest.imported->readings_path +
+                           ", measured by other means" +
+                           (unknown.empty() ? "" : "; not known: " + unknown),
+                       "");
     }
     return out;
 }
@@ -140,7 +156,31 @@ constexpr MeasuredColumn measured_columns[] = {
     {"left", "ui", &Reading::left_ui},     {"right", "ui", &Reading::right_ui},
     {"height", "mv", &Reading::height_mv}, {"width", "ui", &Reading::width_ui}};
 
-std::string csv_header(const RunView& view) {
+struct SlopeColumn {
+    const char* name;
+    const char* unit;
+    Measured EdgeSlopes::* member;
+};
+constexpr SlopeColumn slope_columns[] = {{"up", "mv", &EdgeSlopes::up_mv},
+                                         {"down", "mv", &EdgeSlopes::down_mv},
+                                         {"left", "ui", &EdgeSlopes::left_ui},
+                                         {"right", "ui", &EdgeSlopes::right_ui}};
+
+std::string csv_slopes(const std::optional<EdgeSlopes>& slopes) {
+    std::string out;
+    for (const SlopeColumn& column : slope_columns) {
+        if (!slopes) {
+            out += ",,,";
+            continue;
+        }
+        const Measured& slope = (*slopes).*column.member;
+        out += "," + csv_number(slope.value) + "," + csv_number(slope.std_error) + "," +
+               name_of_bound(slope.bound);
+    }
+    return out;
+}
+
+std::string csv_header(const RunView& view, const std::vector<std::string>& told) {
     std::string out = "run,board,simulated,lane,ordinal,stage,time,condition";
     for (const Dimension& dimension : view.space.dimensions()) {
         out += "," + csv_text(dimension.name + "_code");
@@ -151,10 +191,37 @@ std::string csv_header(const RunView& view) {
         const std::string unit = column.unit;
         out += "," + name + "_" + unit + "," + name + "_se_" + unit + "," + name + "_bound";
     }
-    return out + ",centred,bit_count,cost_s,score,why\n";
+    out += ",height_systematic_mv,width_systematic_ui,centre_error_ratio";
+    for (const SlopeColumn& column : slope_columns) {
+        const std::string name = column.name;
+        const std::string unit = column.unit;
+        out += "," + name + "_slope_" + unit + "," + name + "_slope_se_" + unit + "," + name +
+               "_slope_bound";
+    }
+    out += ",counts,centred,bit_count,cost_s,height_sigma_mv,width_sigma_ui";
+    for (const std::string& name : told) out += "," + csv_text(name);
+    return out + ",score,why\n";
 }
 
-std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRecord& record) {
+// "PHASE_UI:OFFSET_MV:BITS:ERRORS" a look, between spaces; a plus behind saturated ones.
+std::string csv_counts(const std::vector<Count>& counts) {
+    std::string out;
+    for (const Count& count : counts) {
+        out += (out.empty() ? "" : " ") + csv_number(count.look.phase_ui) + ":" +
+               csv_number(count.look.offset_mv) + ":" + std::to_string(count.look.bits) + ":" +
+               std::to_string(count.errors) + (count.saturated ? "+" : "");
+    }
+    return out;
+}
+
+// The noise that the lane's strategy was told.
+std::string csv_noise(const RunView& view, std::uint16_t lane) {
+    const MonitorNoise noise = noise_of(view, view.state.lanes.at(lane));
+    return csv_number(noise.height_sigma_mv) + "," + csv_number(noise.width_sigma_ui);
+}
+
+std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRecord& record,
+                    const std::vector<std::string>& told) {
     const Manifest& manifest = view.manifest;
     const Reading& reading = record.reading;
     std::string out = manifest.run + "," + csv_text(manifest.board) + "," +
@@ -171,8 +238,15 @@ std::string csv_row(const RunView& view, std::uint16_t lane, const LaneReadingRe
                               csv_number(measured->std_error) + "," + name_of_bound(measured->bound)
                         : std::string(",,,");
     }
+    const Systematic systematic = systematic_of(view.board, reading);
+    out += "," + (systematic.height_mv ? csv_number(*systematic.height_mv) : std::string());
+    out += "," + (systematic.width_ui ? csv_number(*systematic.width_ui) : std::string());
+    out += reading.centre_error_ratio ? "," + csv_number(*reading.centre_error_ratio)
+                                      : std::string(",");
+    out += csv_slopes(reading.slopes) + "," + csv_counts(reading.counts);
     return out + (reading.centred_assumed ? ",assumed," : ",measured,") +
            std::to_string(reading.bit_count) + "," + csv_number(reading.cost_s) + "," +
+           csv_noise(view, lane) + telemetry_cells(told, reading) + "," +
            csv_number(score_of(reading, view.recipe.required).value) + "," + csv_text(record.why) +
            "\n";
 }
@@ -220,6 +294,18 @@ std::string lane_writes(const RunView& view, std::uint16_t lane, const Codes& co
     return out;
 }
 
+// "; the step's calibration may add or take 13.7 mV, 0.081 UI"
+std::string systematic_text(const Systematic& systematic) {
+    std::string out;
+    if (systematic.height_mv && *systematic.height_mv > 0) {
+        out += format("%.1f mV", *systematic.height_mv);
+    }
+    if (systematic.width_ui && *systematic.width_ui > 0) {
+        out += (out.empty() ? "" : ", ") + format("%.3f UI", *systematic.width_ui);
+    }
+    return out.empty() ? out : "; apart from the limits, step calibration may add or take " + out;
+}
+
 // "lane 3: r1=4 ... became r1=9 ...; better by ...; the lower limit ..."
 std::string lane_sentence(const RunView& view, const LaneResult& lane) {
     std::string out = "lane " + std::to_string(lane.lane) + ": ";
@@ -231,18 +317,48 @@ std::string lane_sentence(const RunView& view, const LaneResult& lane) {
     }
     if (lane.left == Settlement::restored && lane.decided) out += " (the former put back)";
     if (lane.left == Settlement::restored && !lane.decided) out += " put back";
+    if (lane.left == Settlement::given_up) out += " (given up: not restored)";
     out += "; " + (lane.reason.empty() ? std::string("not finished") : lane.reason);
     if (lane.judgement && !lane.judgement->reason.empty()) out += "; " + lane.judgement->reason;
+    if (lane.after) out += systematic_text(systematic_of(view.board, lane.after->reading));
     if (lane.after && lane.after->reading.centred_assumed) {
         out += "; the monitor tells height and width only, so the eye is taken as centred";
     }
     return out;
 }
 
+std::string lanes_account(const RunView& view) {
+    std::string out;
+    for (const LaneResult& lane : lane_results(view)) {
+        out += wrapped(lane_sentence(view, lane), "  ");
+        for (const std::string& note : lane.notes) out += wrapped("- " + note, "    ");
+    }
+    return out;
+}
+
 }  // namespace
 
+std::string printable(const std::string& text) {
+    std::string out;
+    for (std::size_t i = 0; i < text.size(); ++i) {
+        const auto byte = static_cast<unsigned char>(text[i]);
+        // U+0080 to U+009F are control characters, too: C2 80 to C2 9F in UTF-8.
+        const bool pair = byte == 0xC2 && i + 1 < text.size() &&
+                          static_cast<unsigned char>(text[i + 1]) < 0xA0 &&
+                          static_cast<unsigned char>(text[i + 1]) >= 0x80;
+        if (pair) {
+            out += format("\\x%02X", static_cast<unsigned char>(text[++i]));
+        } else if ((byte < 0x20 && byte != '\n') || byte == 0x7F) {
+            out += format("\\x%02X", byte);
+        } else {
+            out += text[i];
+        }
+    }
+    return out;
+}
+
 std::string wrapped(const std::string& text, const std::string& indent) {
-    std::istringstream words(text);
+    std::istringstream words(printable(text));
     std::string out, line = indent, word;
     while (words >> word) {
         if (line.size() > indent.size() && line.size() + 1 + word.size() > 80) {
@@ -271,23 +387,30 @@ std::string run_table(const RunView& view, bool colour) {
     out += format("%4s  %-9s %-9s", "", "", "") + codes_cell("") +
            format(" %6s %6s %6s %6s %-10s\n", "mV", "UI", "before", "after", "limits");
     for (const LaneResult& lane : lane_results(view)) {
-        out += format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
-               format(" %-9s", lane.outcome ? name_of(*lane.outcome) : "-") +
-               codes_cell(lane.decided ? codes_text(view.space, *lane.decided, '/') : "-") +
-               format(" %6s %6s %6s %6s %-10s %2zu\n",
-                      number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
-                      number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
-                      score_text(lane.before).c_str(), score_text(lane.after).c_str(),
-                      limits_text(lane.after).c_str(), lane.reading_count);
+        out +=
+            format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
+            format(" %-9s", lane.outcome ? name_of(*lane.outcome) : "-") +
+            codes_cell(lane.decided ? codes_text(view.space, *lane.decided, '/') : "-") +
+            format(" %6s %6s %6s %6s %-10s %2zu\n",
+                   number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
+                   number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
+                   score_text(lane.before).c_str(), score_text(lane.after).c_str(),
+                   limits_text(lane.after).c_str(), lane.reading_count - lane.side_reading_count);
     }
-    return out + "n: readings, before and after included; void ones not\n";
+    return out + "n: readings, before and after included; void ones, preflight and reference not\n";
 }
 
 std::string run_account(const RunView& view, bool colour) {
-    std::string out = head_of(view) + "\n" + run_table(view, colour) + "\n";
-    for (const LaneResult& lane : lane_results(view)) {
-        out += wrapped(lane_sentence(view, lane), "  ");
-        for (const std::string& note : lane.notes) out += wrapped("- " + note, "    ");
+    std::string out = head_of(view) + "\n";
+    if (view.manifest.purpose == Purpose::preflight) {
+        out += preflight_table(view);
+    } else {
+        out += run_table(view, colour) + "\n";
+        if (const std::string found = preflight_summary(view); !found.empty()) out += found + "\n";
+        out += lanes_account(view);
+    }
+    if (const std::string told = telemetry_text(view); !told.empty()) {
+        out += "\n" + wrapped(told, "");
     }
     const LinkCounts& link = view.state.link;
     out += format("\nlink: %llu frames, %llu bad, %llu retries, %llu reconnects, %llu resets",
@@ -312,18 +435,25 @@ std::string runs_table(const std::vector<RunView>& runs) {
         for (const LaneResult& lane : lanes) {
             if (lane.judgement && lane.judgement->verdict == Verdict::meets) ++meets;
         }
-        out += format("%-24s %-11s %-12.12s %-14.14s %zu of %zu%s\n", view.manifest.run.c_str(),
-                      run_status(view.state).c_str(), view.manifest.board.c_str(),
-                      view.manifest.recipe.c_str(), meets, lanes.size(),
-                      view.manifest.identity.simulated ? " (sim.)" : "");
+        std::string came_to = std::to_string(meets) + " of " + std::to_string(lanes.size());
+        if (view.manifest.purpose == Purpose::preflight) {
+            came_to = preflight_passed(view.state) ? "fit" : "NOT FIT";
+        }
+        if (view.manifest.identity.simulated) came_to += " (sim.)";
+        out += format("%-24s %-11s %-12.12s %-14.14s %s\n", view.manifest.run.c_str(),
+                      run_status(view).c_str(), printable(view.manifest.board).c_str(),
+                      printable(view.manifest.recipe).c_str(), came_to.c_str());
     }
     return out;
 }
 
 std::string readings_csv(const RunView& view) {
-    std::string out = csv_header(view);
+    const std::vector<std::string> told = telemetry_names(view);
+    std::string out = csv_header(view, told);
     for (const auto& [lane, state] : view.state.lanes) {
-        for (const LaneReadingRecord& record : state.readings) out += csv_row(view, lane, record);
+        for (const LaneReadingRecord& record : state.readings) {
+            out += csv_row(view, lane, record, told);
+        }
     }
     return out;
 }

@@ -9,6 +9,9 @@
 
 namespace lanewright {
 
+// Without bytes that a terminal would obey: control bytes become \xNN, new lines stay.
+std::string printable(const std::string& text);
+
 // Broken at spaces so that no line is longer than 80 columns; each begins with `indent`, and the
 // last ends with a newline.
 std::string wrapped(const std::string& text, const std::string& indent);

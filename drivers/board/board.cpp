@@ -63,8 +63,15 @@ Task<std::unique_ptr<Board>> open_one(BoardFile file, std::unique_ptr<Link> link
     DialectOptions options;
     options.session = session_number.value_or(std::random_device{}());
     options.answer_time = nanoseconds_of(file.dialect.deadline_ms * 1e-3);
+    std::unique_ptr<Dialect> dialect = entry->make(options);
+    if (!dialect->traits().tells_reset && !file.sentinel) {
+        co_return bad_config(file,
+                             "the dialect " + file.dialect.name +
+                                 " cannot tell a reset, and the board file names no sentinel",
+                             "Name a scratch field that a reset clears as \"sentinel\"");
+    }
     auto board =
-        std::make_unique<Board>(std::move(file), std::move(link), entry->make(options), *time);
+        std::make_unique<Board>(std::move(file), std::move(link), std::move(dialect), *time);
     const Result<void> opened = co_await board->open();
     if (!opened) co_return opened.error();
     co_return std::move(board);

@@ -41,7 +41,12 @@ class Board {
     const RegisterMap& map() const { return map_; }
     const BoardFile& file() const { return file_; }
     TimePoint now() const { return time_.now(); }
-    SessionStatistics statistics() const { return session_.statistics(); }
+    // Resets that only the sentinel showed are counted in.
+    SessionStatistics statistics() const {
+        SessionStatistics out = session_.statistics();
+        out.resets += reader_.resets();
+        return out;
+    }
 
     // Ends every call under way with Cause::stopped, then closes the link.
     Task<void> close() { return session_.close(); }

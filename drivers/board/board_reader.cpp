@@ -14,6 +14,7 @@ BoardReader::BoardReader(BoardFile board, const RegisterMap& map, Registers& reg
       registers_(registers),
       time_(time),
       identity_(map, board_.identity),
+      sentinel_(board_),
       never_(time.io()),
       monitor_of_lane_(board_.map.lane_count, board_.monitor.shared_by.size()) {
     for (const std::vector<std::uint16_t>& group : board_.monitor.shared_by) {
@@ -68,17 +69,42 @@ Task<Identity> BoardReader::identify() {
     co_return std::move(*identity);
 }
 
+// A reset that another lane found by the sentinel, and that this one must hear of.
+Result<void> BoardReader::not_reset(Lane lane) {
+    sentinel_.told_by_dialect(registers_.resets());
+    if (!sentinel_.must_be_told(lane)) return {};
+    Fault fault;
+    fault.cause = Cause::board_reset;
+    fault.what = "the board was reset since this lane's last batch: its sentinel had fallen";
+    fault.reg = sentinel_.field() ? sentinel_.field()->text() : "";
+    return at(lane, fault);
+}
+
+// To be called behind not_reset: else the new sentinel would hide the reset from the lane.
+Result<void> BoardReader::plant_sentinel(Lane lane, Compiled& compiled) {
+    if (!sentinel_.declared() || sentinel_.stands(lane)) return {};
+    return compiled.add_scratch(map_, lane, *sentinel_.field(), sentinel_.value());
+}
+
 Task<SavedLane> BoardReader::save(Lane lane) {
+    const Result<void> standing = not_reset(lane);
+    if (!standing) co_return standing.error();
     const std::vector<FieldName> names = fields_to_save(board_);
-    Batch batch;
+    Compiled compiled;
+    std::vector<std::size_t> reads;
     for (const FieldName& name : names) {
-        const Result<void> added = map_.read(batch, lane, name);
+        const Result<std::size_t> added = compiled.add_field(map_, lane, name);
         if (!added) co_return at(lane, added.error());
+        reads.push_back(*added);
     }
-    Result<BatchReply> reply = co_await run(lane, batch);
+    const std::uint64_t generation = sentinel_.generation();
+    const Result<void> planted = plant_sentinel(lane, compiled);
+    if (!planted) co_return at(lane, planted.error());
+    Result<BatchReply> reply = co_await run(lane, compiled.batch());
     if (!reply) co_return reply.error();
-    const Result<void> whole = map_.check_reply(batch, *reply);
+    const Result<void> whole = map_.check_reply(compiled.batch(), *reply);
     if (!whole) co_return at(lane, whole.error());
+    sentinel_.written(lane, generation);
     SavedLane saved;
     saved.lane = lane;
     for (std::size_t i = 0; i < names.size(); ++i) {
@@ -89,7 +115,7 @@ Task<SavedLane> BoardReader::save(Lane lane) {
         each.field = names[i];
         each.address = place->address;
         each.mask = place->mask;
-        each.value = place->value_in(reply->results[i].value_or(0));
+        each.value = compiled.field(reads[i], *reply).value_or(0);
         each.lowest = field.lowest_allowed();
         each.highest = field.highest_allowed();
         each.role = field.role;
@@ -135,10 +161,8 @@ Task<SequenceValues> BoardReader::values_for(Lane lane, Codes wanted) {
     co_return values;
 }
 
-// Carries the compiled sequences out. A missed lock is no fault: what the apply sequence, added
-// first, has behind its wait for lock is then carried out as well, so that nothing stays held.
-Task<BoardReader::Carried> BoardReader::carry_out(Lane lane, Compiled compiled,
-                                                  SequenceValues values) {
+// Carries the compiled sequences out. A missed lock is no fault; the batch ended there.
+Task<BoardReader::Carried> BoardReader::carry(Lane lane, Compiled compiled) {
     Carried out;
     Result<BatchReply> reply = co_await run(lane, compiled.batch());
     if (!reply) co_return reply.error();
@@ -146,13 +170,24 @@ Task<BoardReader::Carried> BoardReader::carry_out(Lane lane, Compiled compiled,
     out.wire = wire_record(compiled.batch(), out.reply);
     const Result<void> whole = map_.check_reply(compiled.batch(), out.reply);
     if (whole) co_return out;
-    const std::optional<Compiled::LockMissed> missed = compiled.lock_missed(out.reply);
-    if (whole.error().cause != Cause::wait_expired || !missed) co_return at(lane, whole.error());
-    out.locked = false;
-    if (missed->added > 0) co_return out;
+    out.missed = compiled.lock_missed(out.reply);
+    if (whole.error().cause != Cause::wait_expired || !out.missed) {
+        co_return at(lane, whole.error());
+    }
+    co_return out;
+}
+
+// The same where the apply sequence was added first: what it has behind its wait for lock is
+// carried out although lock does not come, so that nothing stays held.
+Task<BoardReader::Carried> BoardReader::carry_out(Lane lane, Compiled compiled,
+                                                  SequenceValues values) {
+    Result<Carried> first = co_await carry(lane, compiled);
+    if (!first) co_return first.error();
+    Carried out = std::move(*first);
+    if (out.locked() || out.missed->added > 0) co_return out;
     Compiled rest;
     const Result<void> added =
-        rest.add(map_, board_.dimensions, board_.apply, missed->step + 1, lane, values);
+        rest.add(map_, board_.dimensions, board_.apply, out.missed->step + 1, lane, values);
     if (!added) co_return at(lane, added.error());
     if (rest.batch().empty()) co_return out;
     Result<Carried> carried = co_await carry_out(lane, rest, values);
@@ -172,7 +207,7 @@ Task<Applied> BoardReader::apply(Lane lane, Codes wanted) {
     if (!carried) co_return carried.error();
     Applied applied;
     applied.codes = compiled.codes_read_back(carried->reply);
-    applied.locked = carried->locked;
+    applied.locked = carried->locked();
     applied.wire = std::move(carried->wire);
     co_return applied;
 }
@@ -205,17 +240,47 @@ Task<Codes> BoardReader::restore(Lane lane, SavedLane saved) {
 }
 
 Task<void> BoardReader::bring_up(Lane lane) {
+    const Result<void> standing = not_reset(lane);
+    if (!standing) co_return standing.error();
     SequenceValues values;
     values.bit_rate_gbps = board_.bit_rate_gbps;
     Compiled compiled;
-    const Result<void> added =
-        compiled.add(map_, board_.dimensions, board_.bring_up, 0, lane, values);
+    const std::uint64_t generation = sentinel_.generation();
+    Result<void> added = plant_sentinel(lane, compiled);
+    if (added) added = compiled.add(map_, board_.dimensions, board_.bring_up, 0, lane, values);
     if (!added) co_return at(lane, added.error());
     Result<BatchReply> reply = co_await run(lane, compiled.batch());
     if (!reply) co_return reply.error();
     const Result<void> whole = map_.check_reply(compiled.batch(), *reply);
     if (!whole && !compiled.lock_missed(*reply)) co_return at(lane, whole.error());
+    sentinel_.written(lane, generation);
     co_return Result<void>{};
+}
+
+Task<std::vector<StatusItem>> BoardReader::status(Lane lane) {
+    std::vector<StatusItem> items;
+    std::vector<std::size_t> reads;
+    Compiled compiled;
+    for (const StatusExpectation& each : board_.preflight.items) {
+        const Result<std::size_t> added = compiled.add_field(map_, lane, each.field);
+        if (!added) co_return at(lane, added.error());
+        reads.push_back(*added);
+    }
+    if (reads.empty()) co_return items;
+    Result<BatchReply> reply = co_await run(lane, compiled.batch());
+    if (!reply) co_return reply.error();
+    const Result<void> whole = map_.check_reply(compiled.batch(), *reply);
+    if (!whole) co_return at(lane, whole.error());
+    for (std::size_t i = 0; i < reads.size(); ++i) {
+        const StatusExpectation& each = board_.preflight.items[i];
+        StatusItem item;
+        item.name = each.name;
+        item.field = each.field;
+        item.found = compiled.field(reads[i], *reply).value_or(0);
+        item.expected = each.equals_lane ? number(lane) : each.equals;
+        items.push_back(std::move(item));
+    }
+    co_return items;
 }
 
 }  // namespace lanewright

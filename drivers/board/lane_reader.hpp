@@ -62,6 +62,15 @@ struct Applied {
     std::vector<WireOperation> wire;
 };
 
+// One item of a lane's status, as the board file expects it.
+struct StatusItem {
+    std::string name;  // as StatusExpectation has it
+    FieldName field;
+    std::uint32_t found = 0, expected = 0;
+    bool right() const { return found == expected; }
+    bool operator==(const StatusItem&) const = default;
+};
+
 struct LaneReading {
     Reading reading;
     std::vector<WireOperation> wire;
@@ -86,6 +95,7 @@ class LaneReader {
     // Puts the request's codes and takes one margin reading, in one go. `ordinal` is the reading's
     // number within its lane; the same ordinal names the same reading when it is taken again.
     // Cause::board_reset or outcome_unknown: no reading was taken that counts; bring_up, then anew.
+    // codes_changed: a code was as written and no longer is at the end; `reg` names it.
     virtual Task<LaneReading> read(Lane lane, Request request, std::uint32_t ordinal) = 0;
 
     // Writes the saved values in their order, through the apply sequence for the tuned ones, and
@@ -94,6 +104,12 @@ class LaneReader {
 
     // The board file's `bring_up` sequence, after a reset.
     virtual Task<void> bring_up(Lane lane) = 0;
+
+    // The lane's status items, read in one batch; none where nothing is expected of them.
+    virtual Task<std::vector<StatusItem>> status(Lane) {
+        std::vector<StatusItem> none;
+        co_return none;
+    }
 };
 
 }  // namespace lanewright

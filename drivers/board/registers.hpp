@@ -34,6 +34,9 @@ class Registers {
     // How long run() may take at worst while the board answers at all: every attempt, with the
     // batch's own waits. Deadlines are made of it.
     virtual std::chrono::nanoseconds longest(const Batch& batch) const = 0;
+
+    // Resets that were noticed so far.
+    virtual std::uint64_t resets() const { return 0; }
 };
 
 }  // namespace lanewright

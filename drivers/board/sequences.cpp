@@ -27,6 +27,10 @@ std::uint32_t value_of(const Operand& operand, const SequenceValues& values) {
             return static_cast<std::uint32_t>(values.dwell_bits >> 32);
         case Parameter::ratio_exponent:
             return ratio_exponent_of(values.error_ratio);
+        case Parameter::offset_code:
+            return values.offset_code;
+        case Parameter::phase_code:
+            return values.phase_code;
     }
     return 0;
 }
@@ -70,11 +74,14 @@ Result<void> Compiled::add_step(const RegisterMap& map,
         [&](const auto& each) -> Result<void> {
             using Kind = std::decay_t<decltype(each)>;
             if constexpr (std::is_same_v<Kind, WriteStep>) {
-                return map.write_declared(batch_, lane, each.field, value_of(each.value, values));
+                return add_write(map, each, lane, values);
             } else if constexpr (std::is_same_v<Kind, WriteCodesStep>) {
                 return add_codes(map, dimensions, lane, values);
             } else if constexpr (std::is_same_v<Kind, ReadStep>) {
-                return add_read(map, each, lane);
+                const Result<FieldRead> added = add_read(map, each.field, lane);
+                if (!added) return added.error();
+                reads_.push_back({each.as, sequences_added_, *added});
+                return {};
             } else if constexpr (std::is_same_v<Kind, WaitStep>) {
                 const double dwell_ms =
                     each.plus_dwell && values.bit_rate_gbps > 0
@@ -85,7 +92,7 @@ Result<void> Compiled::add_step(const RegisterMap& map,
             } else if constexpr (std::is_same_v<Kind, PauseStep>) {
                 return map.pause(batch_, microseconds_of(each.pause_ms));
             } else {
-                combines_.push_back(each);
+                combines_.push_back({each, sequences_added_});
                 return {};
             }
         },
@@ -115,13 +122,65 @@ Result<void> Compiled::add_codes(const RegisterMap& map,
     return {};
 }
 
-Result<void> Compiled::add_read(const RegisterMap& map, const ReadStep& step, Lane lane) {
-    const Result<FieldPlace> place = map.place(lane, step.field);
+Result<void> Compiled::add_write(const RegisterMap& map, const WriteStep& step, Lane lane,
+                                 const SequenceValues& values) {
+    const std::uint32_t value = value_of(step.value, values);
+    if (step.when_changed) {
+        const auto stands = standing_.find(step.field);
+        if (stands != standing_.end() && stands->second == value) return {};
+    }
+    const bool joins = step.when_changed && joinable_ == batch_.size();
+    const Result<void> added = joins ? map.write_joined(batch_, lane, step.field, value)
+                                     : map.write_declared(batch_, lane, step.field, value);
+    if (step.when_changed) joinable_ = batch_.size();
+    if (added) standing_[step.field] = value;
+    return added;
+}
+
+// A register is read once for all its fields that follow each other: they are then of one moment,
+// and one that clears on reading gives all of them.
+Result<Compiled::FieldRead> Compiled::add_read(const RegisterMap& map, const FieldName& name,
+                                               Lane lane) {
+    const Result<FieldPlace> place = map.place(lane, name);
     if (!place) return place.error();
-    const Result<void> added = map.read(batch_, lane, step.field);
-    if (!added) return added;
-    reads_.push_back({step.as, batch_.size() - 1, *place});
+    const auto* last = batch_.empty() ? nullptr : std::get_if<Read>(&batch_.operations().back());
+    if (last == nullptr || last->address != place->address) {
+        const Result<void> added = map.read(batch_, lane, name);
+        if (!added) return added.error();
+    }
+    return FieldRead{batch_.size() - 1, *place};
+}
+
+Result<std::size_t> Compiled::add_field(const RegisterMap& map, Lane lane, const FieldName& name) {
+    const Result<FieldRead> added = add_read(map, name, lane);
+    if (!added) return added.error();
+    fields_.push_back(*added);
+    return fields_.size() - 1;
+}
+
+Result<void> Compiled::add_scratch(const RegisterMap& map, Lane lane, const FieldName& name,
+                                   std::uint32_t value) {
+    return map.write_declared(batch_, lane, name, value);
+}
+
+// In pieces, as a board may limit the length of one pause.
+Result<void> Compiled::add_pause(const RegisterMap& map, double seconds) {
+    constexpr double piece_s = 10;
+    for (double left_s = seconds; left_s > 0; left_s -= piece_s) {
+        const Result<void> added =
+            map.pause(batch_, microseconds_of(1e3 * std::min(left_s, piece_s)));
+        if (!added) return added;
+    }
     return {};
+}
+
+std::optional<std::uint32_t> Compiled::FieldRead::value(const BatchReply& reply) const {
+    if (operation >= reply.results.size() || !reply.results[operation]) return std::nullopt;
+    return place.value_in(*reply.results[operation]);
+}
+
+std::optional<std::uint32_t> Compiled::field(std::size_t number, const BatchReply& reply) const {
+    return number < fields_.size() ? fields_[number].value(reply) : std::nullopt;
 }
 
 std::optional<Compiled::LockMissed> Compiled::lock_missed(const BatchReply& reply) const {
@@ -143,18 +202,24 @@ Codes Compiled::codes_read_back(const BatchReply& reply) const {
     return codes;
 }
 
-std::map<std::string, std::uint32_t> Compiled::values(const BatchReply& reply) const {
-    std::map<std::string, std::uint32_t> out;
+Compiled::Values Compiled::values(const BatchReply& reply, std::size_t sequence) const {
+    Values out;
     for (const NamedRead& each : reads_) {
-        if (each.operation < reply.results.size() && reply.results[each.operation]) {
-            out[each.as] = each.place.value_in(*reply.results[each.operation]);
-        }
+        if (each.sequence != sequence) continue;
+        if (const auto value = each.read.value(reply)) out[each.as] = *value;
     }
-    for (const CombineStep& each : combines_) {
-        const auto high = out.find(each.high), low = out.find(each.low);
-        if (high == out.end() || low == out.end() || each.shift >= 32) continue;
-        out[each.as] = (high->second << each.shift) | low->second;
+    for (const auto& [step, added] : combines_) {
+        if (added != sequence) continue;
+        const auto high = out.find(step.high), low = out.find(step.low);
+        if (high == out.end() || low == out.end() || step.shift >= 32) continue;
+        out[step.as] = (high->second << step.shift) | low->second;
     }
+    return out;
+}
+
+Compiled::Values Compiled::values(const BatchReply& reply) const {
+    Values out;
+    for (std::size_t i = sequences_added_; i > 0; --i) out.merge(values(reply, i - 1));
     return out;
 }
 

@@ -23,7 +23,8 @@ struct SequenceValues {
     std::uint32_t ordinal = 0;
     std::uint64_t dwell_bits = 0;
     double error_ratio = 0;
-    double bit_rate_gbps = 0;  // turns a dwell into time
+    double bit_rate_gbps = 0;                       // turns a dwell into time
+    std::uint32_t offset_code = 0, phase_code = 0;  // of one look
 };
 
 // 2^n bits are the least power of two that covers the dwell.
@@ -36,12 +37,27 @@ bool uses(const Sequence& sequence, Parameter parameter);
 
 class Compiled {
   public:
+    // What this reading has written to fields that a sequence writes only when they change.
+    using Standing = std::map<FieldName, std::uint32_t>;
+
+    Compiled() = default;
+    explicit Compiled(Standing standing) : standing_(std::move(standing)) {}
+
     const Batch& batch() const { return batch_; }
+    const Standing& standing() const { return standing_; }
 
     // Adds the steps from number `first` on. Cause::not_allowed as RegisterMap says.
     Result<void> add(const RegisterMap& map, const std::vector<DimensionDescription>& dimensions,
                      const Sequence& sequence, std::size_t first, Lane lane,
                      const SequenceValues& values);
+
+    // Adds one read that belongs to no sequence; gives the number by which field() finds it. Fields
+    // of one register that are read one after another share one read.
+    Result<std::size_t> add_field(const RegisterMap& map, Lane lane, const FieldName& name);
+    // Adds a write that belongs to no sequence, to a scratch field.
+    Result<void> add_scratch(const RegisterMap& map, Lane lane, const FieldName& name,
+                             std::uint32_t value);
+    Result<void> add_pause(const RegisterMap& map, double seconds);
 
     // If the reply ended at a wait for lock: where that was.
     struct LockMissed {
@@ -54,14 +70,29 @@ class Compiled {
     // back are as written. Only after the writes were carried out.
     Codes codes_read_back(const BatchReply& reply) const;
 
-    // Values read and combined, by their names.
-    std::map<std::string, std::uint32_t> values(const BatchReply& reply) const;
+    // Values read and combined, by their names: of all sequences, or of the one added as the n-th.
+    using Values = std::map<std::string, std::uint32_t>;
+    Values values(const BatchReply& reply) const;
+    Values values(const BatchReply& reply, std::size_t sequence) const;
+
+    // What add_field's read of that number gave, in the field's own units; empty where the batch
+    // ended before it.
+    std::optional<std::uint32_t> field(std::size_t number, const BatchReply& reply) const;
 
   private:
-    struct NamedRead {
-        std::string as;
+    struct FieldRead {
         std::size_t operation = 0;
         FieldPlace place;
+        std::optional<std::uint32_t> value(const BatchReply& reply) const;
+    };
+    struct NamedRead {
+        std::string as;
+        std::size_t sequence = 0;
+        FieldRead read;
+    };
+    struct NamedCombine {
+        CombineStep step;
+        std::size_t sequence = 0;
     };
     struct CodeWrite {
         std::size_t operation = 0;
@@ -74,11 +105,16 @@ class Compiled {
     Result<void> add_codes(const RegisterMap& map,
                            const std::vector<DimensionDescription>& dimensions, Lane lane,
                            const SequenceValues& values);
-    Result<void> add_read(const RegisterMap& map, const ReadStep& step, Lane lane);
+    Result<void> add_write(const RegisterMap& map, const WriteStep& step, Lane lane,
+                           const SequenceValues& values);
+    Result<FieldRead> add_read(const RegisterMap& map, const FieldName& name, Lane lane);
 
     Batch batch_;
+    Standing standing_;
+    std::size_t joinable_ = 0;  // the batch's size while its last write may take in another
     std::vector<NamedRead> reads_;
-    std::vector<CombineStep> combines_;
+    std::vector<NamedCombine> combines_;
+    std::vector<FieldRead> fields_;
     std::vector<CodeWrite> code_writes_;            // by dimension
     std::map<std::size_t, LockMissed> lock_waits_;  // by operation
     std::size_t sequences_added_ = 0;

@@ -68,6 +68,7 @@ class Session final : public Registers {
 
     Task<BatchReply> run(Lane lane, Batch batch, TimePoint deadline) override;
     bool fits(const Batch& batch, std::string& why) const override;
+    std::uint64_t resets() const override { return resets_; }
     std::chrono::nanoseconds longest(const Batch& batch) const override;
 
     SessionStatistics statistics() const;

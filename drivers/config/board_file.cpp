@@ -68,14 +68,6 @@ void decode_identity(const Object& object, const RegisterMapDescription& map,
     object.finish();
 }
 
-FieldName decode_scratch(const Node& node, const RegisterMapDescription& map) {
-    FieldName name = decode_field_name(node, map);
-    const FieldDescription* field = map.find(name);
-    if (field != nullptr && field->role != Role::scratch)
-        node.complain(node.described(), "a field of role scratch");
-    return name;
-}
-
 void decode_ordinal(const Object& top, BoardFile& board) {
     const auto node = top.find("ordinal");
     if (!node) return;
@@ -83,14 +75,17 @@ void decode_ordinal(const Object& top, BoardFile& board) {
     const RegisterDescription* reg = board.map.find(board.ordinal->reg);
     if (reg == nullptr) return;
     if (!reg->per_lane) node->complain(node->described(), "a field in a per-lane register");
-    const bool written = std::any_of(
-        board.monitor.sequence.begin(), board.monitor.sequence.end(), [&board](const Step& step) {
-            const auto* write = std::get_if<WriteStep>(&step);
-            return write != nullptr && write->field == *board.ordinal &&
-                   write->value == Operand(Parameter::ordinal);
-        });
+    const bool counted = board.monitor.procedure == MonitorProcedure::counted;
+    const Sequence& sequence = counted ? board.monitor.counted.begin : board.monitor.sequence;
+    const bool written = std::any_of(sequence.begin(), sequence.end(), [&board](const Step& step) {
+        const auto* write = std::get_if<WriteStep>(&step);
+        return write != nullptr && write->field == *board.ordinal &&
+               write->value == Operand(Parameter::ordinal);
+    });
     if (!written)
-        node->complain(node->described(), "a field to which the monitor's sequence writes ordinal");
+        node->complain(node->described(), counted ? "a field to which begin writes ordinal"
+                                                  : "a field to which the monitor's sequence "
+                                                    "writes ordinal");
 }
 
 void decode_cost(const Object& object, CostDescription& cost) {
@@ -158,6 +153,14 @@ void decode_temperature(const Object& top, TemperatureCoefficients& temperature)
 
 }  // namespace
 
+FieldName decode_scratch(const Node& node, const RegisterMapDescription& map) {
+    FieldName name = decode_field_name(node, map);
+    const FieldDescription* field = map.find(name);
+    if (field != nullptr && field->role != Role::scratch)
+        node.complain(node.described(), "a field of role scratch");
+    return name;
+}
+
 std::optional<BoardFile> load_board_file(const std::string& path, Complaints& complaints,
                                          const std::vector<std::string_view>& dialects) {
     const auto document = Document::load(path, complaints);
@@ -187,6 +190,9 @@ std::optional<BoardFile> decode_board_file(const Document& document, Complaints&
     decode_forbidden(top, board);
     decode_monitor(top.object("monitor"), board);
     decode_ordinal(top, board);
+    decode_sentinel(top, board);
+    decode_telemetry(top, board);
+    decode_preflight(top, board);
     decode_sequences(top, board);
     decode_cost(top.object("cost"), board.cost);
     decode_temperature(top, board.temperature);
@@ -197,10 +203,16 @@ std::optional<BoardFile> decode_board_file(const Document& document, Complaints&
     return board;
 }
 
+std::vector<const Sequence*> writing_sequences(const BoardFile& board) {
+    const CountedDescription& counted = board.monitor.counted;
+    return {&board.apply,  &board.monitor.sequence, &counted.begin, &counted.origin.sequence,
+            &counted.look, &board.bring_up};
+}
+
 std::vector<FieldName> fields_to_save(const BoardFile& board) {
     std::vector<FieldName> out;
     for (const DimensionDescription& dimension : board.dimensions) out.push_back(dimension.field);
-    for (const Sequence* sequence : {&board.apply, &board.monitor.sequence, &board.bring_up}) {
+    for (const Sequence* sequence : writing_sequences(board)) {
         for (const Step& step : *sequence) {
             const auto* write = std::get_if<WriteStep>(&step);
             if (write == nullptr) continue;

@@ -70,6 +70,8 @@ enum class Parameter : std::uint8_t {
     dwell_bits_low,  // bits of one dwell, low and high 32 bits
     dwell_bits_high,
     ratio_exponent,  // error ratio as 10^-n
+    offset_code,     // of the look at hand: where the monitor's sampler stands
+    phase_code,
 };
 
 using Operand = std::variant<std::uint32_t, Parameter>;
@@ -77,6 +79,9 @@ using Operand = std::variant<std::uint32_t, Parameter>;
 struct WriteStep {
     FieldName field;
     Operand value;
+    // Left out where this reading has written the same value there; neighbours in one register are
+    // written together.
+    bool when_changed = false;
 };
 struct WriteCodesStep {};  // writes the tuned dimensions, in the order the board file lists them
 struct ReadStep {
@@ -125,13 +130,36 @@ struct ForbiddenCombination {
     std::string why;
 };
 
-enum class MonitorProcedure : std::uint8_t { latched };
+enum class MonitorProcedure : std::uint8_t {
+    latched,  // finds the edges by itself and holds their distances in steps
+    counted   // counts errors where it is told to look
+};
 
 struct StepSize {
     double size = 0;              // mV or UI a step
     double tolerance = 0;         // relative, of the step's calibration
-    std::int32_t most_steps = 0;  // top of the counter
+    std::int32_t most_steps = 0;  // top of the counter; of a counted monitor: reach to either side
     double sigma = 0;             // repeatability of one edge, 1 sigma, mV or UI
+    std::int32_t centre = 0;      // counted: the code of no offset
+    double nonlinearity_steps = 0;  // counted: of one step's place, 1 sigma
+};
+
+// Where a counted monitor's looks are counted from: the data sampler's decision point.
+struct OriginDescription {
+    Sequence sequence;  // reads the codes `offset` and `phase` of it; empty: it is at the centres
+    double tolerance_mv = 0, tolerance_ui = 0;  // to either side
+};
+
+// What a counting monitor has beside its step sizes.
+struct CountedDescription {
+    std::uint64_t least_bits = 0, most_bits = 0;  // of one look
+    bool bits_by_powers_of_two = false;           // `look` is told an exponent
+    std::uint64_t most_errors = 0;                // where the counter stops; 0: it does not
+    std::uint32_t looks_a_batch = 16;             // at most
+    std::uint32_t most_looks = 16;                // of one reading
+    Sequence begin;                               // once a reading, behind `apply`
+    Sequence look;                                // one dwell: point, start, wait, read
+    OriginDescription origin;
 };
 
 struct MonitorDescription {
@@ -141,9 +169,37 @@ struct MonitorDescription {
     StepSize height, width;         // mV; UI
     double lowest_error_ratio = 0;  // a latched monitor's own lower end
     std::vector<std::vector<std::uint16_t>>
-        shared_by;           // lanes that share one monitor; others have their own
-    Sequence sequence;       // one margin reading
-    bool four_edges = true;  // false: `height` and `width` only
+        shared_by;               // lanes that share one monitor; others have their own
+    Sequence sequence;           // latched: one margin reading
+    bool four_edges = true;      // false: `height` and `width` only
+    CountedDescription counted;  // where the procedure is that
+};
+
+// Read with every reading and kept with it: value = raw * scale + offset.
+struct TelemetryField {
+    std::string name;  // die_temperature_c, ...
+    FieldName field;
+    double scale = 1, offset = 0;
+};
+
+// What a lane's status must be before anything is measured.
+struct StatusExpectation {
+    std::string name;  // reference_clock, lock, pattern_sync, polarity, lane_order or loops
+    FieldName field;
+    std::uint32_t equals = 0;
+    bool equals_lane = false;  // expected is the lane's number instead
+};
+
+// What the tests before a search must not exceed; what is absent has no limit.
+struct PreflightLimits {
+    std::optional<double> repeatability_mv, repeatability_ui;  // 1 sigma of one edge
+    std::optional<double> return_mv, return_ui;  // moved by leaving the codes and coming back
+    std::optional<double> settle_s;              // until readings stay the same
+};
+
+struct PreflightDescription {
+    std::vector<StatusExpectation> items;  // in the order in which they are told
+    PreflightLimits limits;
 };
 
 struct CostDescription {
@@ -168,12 +224,16 @@ struct BoardFile {
     DialectDescription dialect;
     IdentityDescription identity;
     RegisterMapDescription map;
-    FieldName scratch;                 // for `check`; board-wide or per lane
-    std::optional<FieldName> ordinal;  // per-lane scratch that carries the reading's ordinal
+    FieldName scratch;                  // for `check`; board-wide or per lane
+    std::optional<FieldName> ordinal;   // per-lane scratch that carries the reading's ordinal
+    std::optional<FieldName> sentinel;  // scratch that a reset clears; none needed where the
+                                        // dialect tells a reset
     std::vector<DimensionDescription> dimensions;
     std::vector<ForbiddenCombination> forbidden;
     double bit_rate_gbps = 0;
     MonitorDescription monitor;
+    std::vector<TelemetryField> telemetry;
+    PreflightDescription preflight;
     Sequence apply, bring_up;
     CostDescription cost;
     TemperatureCoefficients temperature;
@@ -190,6 +250,9 @@ std::optional<BoardFile> load_board_file(const std::string& path, Complaints& co
 std::optional<BoardFile> decode_board_file(const Document& document, Complaints& complaints,
                                            const std::vector<std::string_view>& dialects = {
                                                "framed"});
+
+// Every sequence of the file that may write: apply, the monitor's, bring_up.
+std::vector<const Sequence*> writing_sequences(const BoardFile& board);
 
 // The fields a run may write: tuned first, in the order of the dimensions, then the control and
 // scratch fields that the sequences write, in the order in which they first appear. Self-clearing

@@ -10,8 +10,8 @@ namespace lanewright {
 
 namespace {
 
-constexpr std::array<std::string_view, 7> result_names = {"up",     "down",  "left",  "right",
-                                                          "height", "width", "closed"};
+const std::vector<std::string_view> result_names = {"up",     "down",  "left",  "right",
+                                                    "height", "width", "closed"};
 
 StepSize decode_step_size(const Object& object, std::string_view step_key,
                           std::string_view sigma_key) {
@@ -46,46 +46,17 @@ void decode_groups(const Object& monitor, BoardFile& board) {
     }
 }
 
-// Every value that the sequence reads or combines, and those which only a combine step uses.
-struct Values {
-    std::set<std::string> made, used;
-    bool has(const char* name) const { return made.contains(name); }
-};
-
-Values values_of(const Sequence& sequence) {
-    Values values;
-    for (const Step& step : sequence) {
-        if (const auto* read = std::get_if<ReadStep>(&step)) values.made.insert(read->as);
-        if (const auto* combine = std::get_if<CombineStep>(&step)) {
-            values.made.insert(combine->as);
-            values.used.insert({combine->high, combine->low});
-        }
-    }
-    return values;
-}
-
-void check_value_names(const List& list, const Values& values) {
-    const std::vector<std::string_view> known(result_names.begin(), result_names.end());
-    for (const Node node : list) {
-        if (!node.is_object()) continue;
-        const auto as = node.object().find("as");
-        if (!as || !as->is_text() || as->text().empty()) continue;
-        if (!values.used.contains(as->text())) as->word(known);
-    }
-}
-
 void check_results(const List& list, BoardFile& board) {
-    const Values values = values_of(board.monitor.sequence);
-    check_value_names(list, values);
-    const int edges = static_cast<int>(values.has("up")) + static_cast<int>(values.has("down")) +
-                      static_cast<int>(values.has("left")) + static_cast<int>(values.has("right"));
-    const int sizes =
-        static_cast<int>(values.has("height")) + static_cast<int>(values.has("width"));
+    const Sequence& sequence = board.monitor.sequence;
+    check_value_names(list, sequence, result_names);
+    int edges = 0, sizes = 0;
+    for (const char* name : {"up", "down", "left", "right"}) edges += makes(sequence, name) ? 1 : 0;
+    for (const char* name : {"height", "width"}) sizes += makes(sequence, name) ? 1 : 0;
     board.monitor.four_edges = edges == 4;
     if ((edges == 4 && sizes == 0) || (edges == 0 && sizes == 2)) return;
     std::string found;
     for (const char* name : {"up", "down", "left", "right", "height", "width"}) {
-        if (values.has(name)) found += (found.empty() ? "only " : ", ") + std::string(name);
+        if (makes(sequence, name)) found += (found.empty() ? "only " : ", ") + std::string(name);
     }
     if (edges > 0 && sizes > 0) found.replace(0, 5, "both kinds, ");
     list.node().complain(found.empty() ? "a sequence that reads no margin" : found,
@@ -109,26 +80,58 @@ void check_most_steps(const Object& object, const StepSize& size, const BoardFil
     }
 }
 
-}  // namespace
-
-void decode_monitor(const Object& object, BoardFile& board) {
+void decode_latched(const Object& object, BoardFile& board) {
     MonitorDescription& monitor = board.monitor;
-    object.word("procedure", {"latched"});
-    constexpr std::array<std::string_view, 2> definitions = {"pattern", "decision"};
-    monitor.error_definition =
-        definitions[object.word("error_definition", {definitions[0], definitions[1]})];
-    monitor.pattern = object.text_or("pattern", "");
     const Object height = object.object("height");
     const Object width = object.object("width");
     monitor.height = decode_step_size(height, "step_mv", "sigma_mv");
     monitor.width = decode_step_size(width, "step_ui", "sigma_ui");
     monitor.lowest_error_ratio = object.number("lowest_error_ratio", {.at_most = 0.5, .above = 0});
-    decode_groups(object, board);
     const List sequence = object.list("sequence");
     monitor.sequence = decode_sequence(sequence, SequenceKind::monitor, board.map);
     if (sequence.node().is_list()) check_results(sequence, board);
     check_most_steps(height, monitor.height, board, {"up", "down", "height"});
     check_most_steps(width, monitor.width, board, {"left", "right", "width"});
+}
+
+}  // namespace
+
+bool makes(const Sequence& sequence, std::string_view name) {
+    return std::any_of(sequence.begin(), sequence.end(), [name](const Step& step) {
+        if (const auto* read = std::get_if<ReadStep>(&step)) return read->as == name;
+        if (const auto* combine = std::get_if<CombineStep>(&step)) return combine->as == name;
+        return false;
+    });
+}
+
+void check_value_names(const List& list, const Sequence& sequence,
+                       const std::vector<std::string_view>& known) {
+    std::set<std::string> used;
+    for (const Step& step : sequence) {
+        if (const auto* combine = std::get_if<CombineStep>(&step))
+            used.insert({combine->high, combine->low});
+    }
+    for (const Node node : list) {
+        if (!node.is_object()) continue;
+        const auto as = node.object().find("as");
+        if (!as || !as->is_text() || as->text().empty()) continue;
+        if (!used.contains(as->text())) as->word(known);
+    }
+}
+
+void decode_monitor(const Object& object, BoardFile& board) {
+    MonitorDescription& monitor = board.monitor;
+    monitor.procedure =
+        static_cast<MonitorProcedure>(object.word("procedure", {"latched", "counted"}));
+    constexpr std::array<std::string_view, 2> definitions = {"pattern", "decision"};
+    monitor.error_definition =
+        definitions[object.word("error_definition", {definitions[0], definitions[1]})];
+    monitor.pattern = object.text_or("pattern", "");
+    decode_groups(object, board);
+    if (monitor.procedure == MonitorProcedure::counted)
+        decode_counted(object, board);
+    else
+        decode_latched(object, board);
     object.finish();
 }
 

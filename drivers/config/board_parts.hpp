@@ -21,11 +21,36 @@ void decode_dimensions(const Object& top, BoardFile& board);
 void decode_forbidden(const Object& top, BoardFile& board);
 
 // What the sequence at hand may do.
-enum class SequenceKind : std::uint8_t { apply, bring_up, monitor };
+enum class SequenceKind : std::uint8_t {
+    apply,
+    bring_up,
+    monitor,  // of a latched monitor
+    begin,    // these three of a counted one
+    look,
+    origin
+};
 
 Sequence decode_sequence(const List& list, SequenceKind kind, const RegisterMapDescription& map);
 
 void decode_monitor(const Object& monitor, BoardFile& board);
+
+// What only a counted monitor has; the rest of the object is decode_monitor's.
+void decode_counted(const Object& monitor, BoardFile& board);
+
+// Complains of names of values that nobody picks up, those which a combine step uses apart.
+void check_value_names(const List& list, const Sequence& sequence,
+                       const std::vector<std::string_view>& known);
+
+// Whether the sequence reads or combines a value of that name.
+bool makes(const Sequence& sequence, std::string_view name);
+
+// "telemetry", "sentinel" and "preflight".
+void decode_telemetry(const Object& top, BoardFile& board);
+void decode_sentinel(const Object& top, BoardFile& board);
+void decode_preflight(const Object& top, BoardFile& board);
+
+// Complains at `node` unless it names a field of role scratch.
+FieldName decode_scratch(const Node& node, const RegisterMapDescription& map);
 
 // Complains at `node` unless it names a field that exists and can be read.
 FieldName decode_readable_field(const Node& node, const RegisterMapDescription& map);

@@ -14,13 +14,36 @@ constexpr double longest_pause_ms = 60e3;
 
 constexpr std::array<std::string_view, 6> step_keys = {"write", "write_codes", "read",
                                                        "wait",  "pause_ms",    "combine"};
-const std::vector<std::string_view> parameter_words = {"ordinal", "dwell_log2", "dwell_bits_low",
-                                                       "dwell_bits_high", "ratio_exponent"};
+
+struct ParameterWord {
+    std::string_view word;
+    Parameter parameter = Parameter::ordinal;
+};
+
+constexpr ParameterWord ordinal_word{"ordinal", Parameter::ordinal};
+constexpr ParameterWord dwell_words[] = {{"dwell_log2", Parameter::dwell_log2},
+                                         {"dwell_bits_low", Parameter::dwell_bits_low},
+                                         {"dwell_bits_high", Parameter::dwell_bits_high}};
+constexpr ParameterWord ratio_word{"ratio_exponent", Parameter::ratio_exponent};
+constexpr ParameterWord point_words[] = {{"offset_code", Parameter::offset_code},
+                                         {"phase_code", Parameter::phase_code}};
+
+// What values of a reading a sequence of that kind may write.
+std::vector<ParameterWord> parameters_of(SequenceKind kind) {
+    std::vector<ParameterWord> out;
+    const bool dwells = kind == SequenceKind::monitor || kind == SequenceKind::look;
+    if (dwells || kind == SequenceKind::begin) out.push_back(ordinal_word);
+    if (dwells) out.insert(out.end(), std::begin(dwell_words), std::end(dwell_words));
+    if (kind == SequenceKind::monitor) out.push_back(ratio_word);
+    if (kind == SequenceKind::look)
+        out.insert(out.end(), std::begin(point_words), std::end(point_words));
+    return out;
+}
 
 class SequenceDecoder {
   public:
     SequenceDecoder(SequenceKind kind, const RegisterMapDescription& map)
-        : kind_(kind), map_(map) {}
+        : kind_(kind), map_(map), parameters_(parameters_of(kind)) {}
 
     Sequence decode(const List& list) {
         Sequence sequence;
@@ -85,13 +108,21 @@ class SequenceDecoder {
             node.complain(node.described() + ", a field without a role",
                           "a control or scratch field", "fields without a role are never written");
         step.value = operand(object.need("value"), field);
+        if (const auto when_changed = object.find("when_changed")) {
+            step.when_changed = when_changed->boolean();
+            if (step.when_changed && kind_ != SequenceKind::look)
+                when_changed->complain("true", "it in the look of a counted monitor only",
+                                       "elsewhere every write is made");
+        }
         return step;
     }
 
     Operand operand(const Node& node, const FieldDescription* field) const {
         const bool is_word = node.is_text() && !node.text().starts_with("0x");
-        if (is_word && kind_ == SequenceKind::monitor) {
-            const auto parameter = static_cast<Parameter>(node.word(parameter_words));
+        if (is_word && !parameters_.empty()) {
+            std::vector<std::string_view> words;
+            for (const ParameterWord& each : parameters_) words.push_back(each.word);
+            const Parameter parameter = parameters_[node.word(words)].parameter;
             // A narrower field would cut the number of bits without a word.
             if (parameter == Parameter::dwell_bits_low && field != nullptr && field->width() < 32)
                 node.complain(node.described(), "a field of 32 bits for it");
@@ -99,7 +130,7 @@ class SequenceDecoder {
         }
         if (is_word)
             node.complain(node.described(), "a number",
-                          "values of a reading exist only in the monitor's sequence");
+                          "values of a reading exist only in the sequence that takes it");
         const std::int64_t lowest = field != nullptr ? field->lowest_allowed() : 0;
         const std::int64_t highest = field != nullptr ? field->highest_allowed() : 0xFFFFFFFF;
         if (is_word) return static_cast<std::uint32_t>(lowest);
@@ -132,8 +163,8 @@ class SequenceDecoder {
         step.timeout_ms = object.number("timeout_ms", {.at_most = longest_wait_ms, .above = 0});
         if (const auto plus_dwell = object.find("plus_dwell")) {
             step.plus_dwell = plus_dwell->boolean();
-            if (step.plus_dwell && kind_ != SequenceKind::monitor)
-                plus_dwell->complain("true", "it in the monitor's sequence only",
+            if (step.plus_dwell && kind_ != SequenceKind::monitor && kind_ != SequenceKind::look)
+                plus_dwell->complain("true", "it where the monitor dwells only",
                                      "nothing dwells here");
         }
         if (const auto otherwise = object.find("otherwise")) {
@@ -178,6 +209,7 @@ class SequenceDecoder {
 
     SequenceKind kind_;
     const RegisterMapDescription& map_;
+    const std::vector<ParameterWord> parameters_;
     int codes_written_ = 0;
     std::vector<std::string> values_;
 };

@@ -37,6 +37,7 @@ struct DialectTraits {
     std::string name;
     std::size_t in_flight = 1;        // most batches under way at once
     bool board_waits = true;          // wait-until and pause are the board's own doing
+    bool tells_reset = false;         // a reset shows in the next answer, whatever was asked
     std::size_t most_operations = 0;  // in one batch; 0: not known before the greeting
     std::chrono::microseconds longest_wait{};
 };

@@ -60,6 +60,7 @@ Framed::Framed(const DialectOptions& options)
     traits_.name = "framed";
     traits_.in_flight = 1;
     traits_.board_waits = true;
+    traits_.tells_reset = true;
 }
 
 bool Framed::fits(const Batch& batch, std::string& why) const {

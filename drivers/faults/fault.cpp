@@ -20,6 +20,8 @@ const char* name_of(Cause cause) {
             return "refused by the board";
         case Cause::not_accepted:
             return "write not accepted";
+        case Cause::codes_changed:
+            return "codes changed";
         case Cause::wait_expired:
             return "wait expired";
         case Cause::wrong_board:
@@ -34,6 +36,8 @@ const char* name_of(Cause cause) {
             return "no permission";
         case Cause::io:
             return "input/output";
+        case Cause::not_fit:
+            return "not fit to measure";
         case Cause::stopped:
             return "stopped";
         case Cause::bad_data:

@@ -25,6 +25,7 @@ enum class Cause : std::uint8_t {
     board_reset,      // the boot number changed: codes are at reset values
     refused,          // the board answered with an error: wrong address, wrong operation
     not_accepted,     // a write read back as something else
+    codes_changed,    // a code was as written and no longer is: something else writes it
     wait_expired,     // a board-side wait came to its end without its condition
     wrong_board,      // identity differs from the board file
     not_allowed,      // outside the board file's roles and limits
@@ -32,6 +33,7 @@ enum class Cause : std::uint8_t {
     bad_config,       // the files ask for what cannot be: 78
     no_permission,    // 77
     io,               // store or file system: 74
+    not_fit,          // board or bench is not fit to measure on: a preflight item failed, 76
     stopped,          // a stop was asked for
     bad_data,         // what was named does not exist or cannot be read: 65
     diverged,         // a resumed run would not repeat what is stored

@@ -72,9 +72,7 @@ RegisterMap::RegisterMap(const BoardFile& board) : description_(board.map), stro
         dimension_names_.push_back(dimension.name);
     }
     note_addresses();
-    note_declared(board.apply);
-    note_declared(board.bring_up);
-    note_declared(board.monitor.sequence);
+    for (const Sequence* sequence : writing_sequences(board)) note_declared(*sequence);
     note_forbidden(board);
 }
 
@@ -164,6 +162,22 @@ Result<void> RegisterMap::write_declared(Batch& batch, Lane lane, const FieldNam
     if (const Result<void> limits = check_limits(lane, name, field, value); !limits) return limits;
     add_write(batch, *at, field, value);
     return {};
+}
+
+Result<void> RegisterMap::write_joined(Batch& batch, Lane lane, const FieldName& name,
+                                       std::uint32_t value) const {
+    const std::size_t before = batch.size();
+    const Result<void> added = write_declared(batch, lane, name, value);
+    if (!added || before == 0) return added;
+    auto* last = std::get_if<Write>(&batch.operations_[before - 1]);
+    const auto& own = std::get<Write>(batch.operations_[before]);
+    const bool joins = last != nullptr && last->address == own.address && last->read_back &&
+                       own.read_back && (last->mask & own.mask) == 0;
+    if (!joins) return added;
+    last->mask |= own.mask;
+    last->value |= own.value;
+    batch.operations_.pop_back();
+    return added;
 }
 
 Result<void> RegisterMap::wait_until(Batch& batch, Lane lane, const FieldName& name,

@@ -60,6 +60,11 @@ class RegisterMap {
     Result<void> write_declared(Batch& batch, Lane lane, const FieldName& name,
                                 std::uint32_t value) const;
 
+    // The same, joined to the batch's last write where that is to other bits of the same register
+    // and both are read back: one write then puts both fields.
+    Result<void> write_joined(Batch& batch, Lane lane, const FieldName& name,
+                              std::uint32_t value) const;
+
     Result<void> wait_until(Batch& batch, Lane lane, const FieldName& name, std::uint32_t value,
                             std::chrono::microseconds timeout) const;
 

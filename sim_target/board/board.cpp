@@ -1,6 +1,7 @@
 #include "sim_target/board/board.hpp"
 
 #include <algorithm>
+#include <optional>
 
 namespace lanewright::sim {
 
@@ -26,7 +27,9 @@ struct Board::Running {
     BatchHead head;
     std::vector<WireStep> steps;
     Writer results;
-    bool to_be_reset = false;  // this one ends in a reset of the board
+    std::uint64_t number = 0;           // counted from 1 since the start
+    std::optional<std::uint16_t> lane;  // whose registers were the last to be touched
+    bool to_be_reset = false;           // this one ends in a reset of the board
 };
 
 Board::Board(TimeSource& time, const BoardSide& side, ChipOptions options,
@@ -178,25 +181,28 @@ void Board::start(std::shared_ptr<Session> session, const BatchHead& head,
     running->session = std::move(session);
     running->head = head;
     running->steps = std::move(steps);
+    running->number = batches_;
     running->to_be_reset = resets;
     tasks_.spawn("batch", carry_out(std::move(running)));
 }
 
-// The reset strikes while the batch waits, or else after half of its operations.
-void Board::reset_in_mid_batch(Running& running, std::size_t step) {
+// What strikes in mid-batch does so while the batch waits, or else after half of its operations.
+void Board::strike_in_mid_batch(Running& running, std::size_t step) {
     const auto& steps = running.steps;
     const auto waits = [](const WireStep& one) { return one.verb == Verb::wait; };
     const auto first = std::find_if(steps.begin(), steps.end(), waits);
     const std::size_t where =
         first != steps.end() ? static_cast<std::size_t>(first - steps.begin()) : steps.size() / 2;
-    if (running.to_be_reset && step == where) reset();
+    if (step != where) return;
+    if (chip_.foreign_writes(running.number)) wake_waits();
+    if (running.to_be_reset) reset();
 }
 
 Task<void> Board::carry_out(std::shared_ptr<Running> running) {
     Outcome outcome = Outcome::done;
     std::size_t step = 0;
     for (; step < running->steps.size(); ++step) {
-        reset_in_mid_batch(*running, step);
+        strike_in_mid_batch(*running, step);
         if (running->session->gone.requested()) co_return Result<void>{};
         outcome = co_await carry_out_step(running, running->steps[step]);
         if (outcome != Outcome::done) break;
@@ -212,6 +218,9 @@ Task<void> Board::carry_out(std::shared_ptr<Running> running) {
 
 boost::asio::awaitable<Outcome> Board::carry_out_step(std::shared_ptr<Running> running,
                                                       WireStep step) {
+    if (step.verb != Verb::pause) {
+        if (const auto lane = chip_.registers().lane_of(step.address)) running->lane = lane;
+    }
     switch (step.verb) {
         case Verb::read:
             co_return read_step(step, *running);
@@ -227,6 +236,7 @@ boost::asio::awaitable<Outcome> Board::carry_out_step(std::shared_ptr<Running> r
         case Verb::pause: {
             const TimePoint end = chip_.after(step.time_us * 1e-6);
             co_await time_.sleep_until(end, running->session->gone);
+            if (running->lane) chip_.paused(*running->lane, step.time_us * 1e-6);
             co_return Outcome::done;
         }
     }

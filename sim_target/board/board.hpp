@@ -64,7 +64,7 @@ class Board {
     Outcome read_step(const WireStep& step, Running& running);
     Outcome check_step(const WireStep& step, Running& running);
     void wake_waits();
-    void reset_in_mid_batch(Running& running, std::size_t step);
+    void strike_in_mid_batch(Running& running, std::size_t step);
 
     TimeSource& time_;
     BoardLimits limits_;

@@ -1,5 +1,6 @@
 #include "sim_target/board/board_side.hpp"
 
+#include <algorithm>
 #include <filesystem>
 #include <string_view>
 
@@ -10,7 +11,8 @@ namespace {
 struct PartName {
     Part part;
     std::string_view name;
-    bool needed;
+    bool needed = false;
+    bool once = false;  // a field of the board, not of a lane
 };
 
 constexpr std::array<PartName, part_count> part_names = {{
@@ -30,6 +32,24 @@ constexpr std::array<PartName, part_count> part_names = {{
     {Part::dwell_log2, "dwell_log2", false},
     {Part::ratio_exponent, "ratio_exponent", false},
     {Part::ordinal, "ordinal", false},
+    {Part::offset, "offset", false},
+    {Part::phase, "phase", false},
+    {Part::count, "count", false},
+    {Part::errors, "errors", false},
+    {Part::saturated, "saturated", false},
+    {Part::bits, "bits", false},
+    {Part::origin_offset, "origin_offset", false},
+    {Part::origin_phase, "origin_phase", false},
+    {Part::hold_loops, "hold_loops", false},
+    {Part::loops, "loops", false},
+    {Part::pattern_sync, "pattern_sync", false},
+    {Part::inverted, "inverted", false},
+    {Part::losses, "losses", false},
+    {Part::lane_tag, "lane_tag", false},
+    {Part::temperature, "temperature", false, true},
+    {Part::supply, "supply", false, true},
+    {Part::clock_present, "clock_present", false, true},
+    {Part::clock_ok, "clock_ok", false, true},
 }};
 
 // An object of "REGISTER.field": value.
@@ -59,8 +79,10 @@ std::optional<FieldName> read_part(const Object& from, const PartName& part,
     const FieldName name = decode_field_name(*node, map);
     const RegisterDescription* reg = map.find(name.reg);
     if (reg == nullptr || map.find(name) == nullptr) return std::nullopt;
-    if (!reg->per_lane) {
-        node->complain(name.text() + ", which the whole board has once", "a field of each lane");
+    if (reg->per_lane == part.once) {
+        node->complain(name.text() + (part.once ? ", which each lane has"
+                                                : ", which the whole board has once"),
+                       part.once ? "a field of the whole board" : "a field of each lane");
     }
     return name;
 }
@@ -73,6 +95,20 @@ void complain_of_doubles(const Object& from, const Binding& binding) {
             from.need(one.name).complain("the field of \"" + std::string(other.name) + "\" again",
                                          "a field of its own for each part");
         }
+    }
+}
+
+// A counted look needs a place, a start and a result.
+void complain_of_half_a_counter(const Object& from, const Binding& binding) {
+    const std::array<Part, 4> whole = {Part::offset, Part::phase, Part::count, Part::errors};
+    const auto bound = [&](Part part) { return binding.field(part).has_value(); };
+    if (std::none_of(whole.begin(), whole.end(), bound)) return;
+    for (const PartName& part : part_names) {
+        if (std::find(whole.begin(), whole.end(), part.part) == whole.end() || bound(part.part)) {
+            continue;
+        }
+        from.node().complain("no key \"" + std::string(part.name) + "\"",
+                             "offset, phase, count and errors together");
     }
 }
 
@@ -102,6 +138,7 @@ Binding read_binding(const Object& from, const RegisterMapDescription& map) {
         binding.fields[static_cast<std::size_t>(part.part)] = read_part(from, part, map);
     }
     complain_of_doubles(from, binding);
+    complain_of_half_a_counter(from, binding);
     binding.shared_by = read_groups(from, map.lane_count);
     if (const auto fixed = from.object_if("fixed")) binding.fixed = read_values(*fixed, map);
     from.finish();

@@ -18,7 +18,8 @@
 
 namespace lanewright::sim {
 
-// The part that a field plays in the chip; all but `fixed` are fields of a lane.
+// The part that a field plays in the chip. All but `fixed` and those said to be once a board are
+// fields of a lane.
 enum class Part : std::uint8_t {
     r1,  // bank codes, in the order of all codes here
     c1,
@@ -36,7 +37,25 @@ enum class Part : std::uint8_t {
     dwell_log2,      // bits of one dwell, as an exponent of two
     ratio_exponent,  // error ratio as 10^-n
     ordinal,         // the reading's number; absent: readings are counted
-    fixed,           // identity and the like: a value that never changes
+    offset,          // where the next counted look looks, in steps; the middle is the centre
+    phase,
+    count,          // a written one starts a counted look
+    errors,         // of the last counted look
+    saturated,      // more of them than the field holds
+    bits,           // as an exponent of two, of the last counted look
+    origin_offset,  // the data sampler's decision point, as the chip's alignment finds it
+    origin_phase,
+    hold_loops,  // the loops stand still while it is one
+    loops,       // they run
+    pattern_sync,
+    inverted,     // the pattern checker sees the wrong polarity
+    losses,       // how often lock was lost
+    lane_tag,     // which lane this is
+    temperature,  // quarter degrees above -64 degrees Celsius; this and the rest once a board
+    supply,       // mV
+    clock_present,
+    clock_ok,
+    fixed,  // identity and the like: a value that never changes
     none
 };
 constexpr std::size_t part_count = static_cast<std::size_t>(Part::fixed);

@@ -15,6 +15,20 @@ bool is_status(Part part) {
         case Part::down:
         case Part::left:
         case Part::right:
+        case Part::errors:
+        case Part::saturated:
+        case Part::bits:
+        case Part::origin_offset:
+        case Part::origin_phase:
+        case Part::loops:
+        case Part::pattern_sync:
+        case Part::inverted:
+        case Part::losses:
+        case Part::lane_tag:
+        case Part::temperature:
+        case Part::supply:
+        case Part::clock_present:
+        case Part::clock_ok:
             return true;
         default:
             return false;
@@ -23,6 +37,10 @@ bool is_status(Part part) {
 
 bool is_code(Part part) {
     return part <= Part::c2;
+}
+
+bool starts_something(Part part) {
+    return part == Part::strobe || part == Part::trigger || part == Part::count;
 }
 
 }  // namespace
@@ -52,6 +70,7 @@ RegisterFile::Register RegisterFile::make_register(
     const std::vector<int>& reset_codes) const {
     Register reg;
     reg.lane = lane;
+    reg.per_lane = from.per_lane;
     reg.all = from.width_bits >= 32 ? 0xFFFFFFFFu : (1u << from.width_bits) - 1u;
     for (const FieldDescription& description : from.fields) {
         const FieldName name{from.name, description.name};
@@ -115,18 +134,18 @@ Outcome RegisterFile::write(std::uint32_t address, std::optional<std::uint32_t> 
     if (!reg.writable) return Outcome::no_access;
     if ((value & ~reg.all) != 0 || (mask.value_or(0) & ~reg.all) != 0) return Outcome::beyond_width;
     const std::uint32_t written = mask.value_or(reg.all);
-    bool codes = false;
+    std::optional<Part> told;
     for (const Field& field : reg.fields) {
         const std::uint32_t bits = field.mask & written;
         const bool keeps = field.access == Access::read_write || field.access == Access::write_only;
         if (bits == 0 || !keeps) continue;
         reg.value = (reg.value & ~bits) | (value & bits);
-        codes = codes || is_code(field.part);
+        if (is_code(field.part)) told = field.part;
+        if (field.part == Part::ordinal) hardware_.written(reg.lane, field.part);
     }
-    if (codes) hardware_.code_written(reg.lane);
+    if (told) hardware_.written(reg.lane, *told);
     for (const Field& field : reg.fields) {
-        const bool starts = field.part == Part::strobe || field.part == Part::trigger;
-        if (starts && (field.mask & written & value) != 0) {
+        if (starts_something(field.part) && (field.mask & written & value) != 0) {
             hardware_.started(reg.lane, field.part);
         }
     }
@@ -138,14 +157,42 @@ std::uint32_t RegisterFile::all_bits(std::uint32_t address) const {
     return found == registers_.end() ? 0 : found->second.all;
 }
 
-std::optional<std::uint32_t> RegisterFile::stored(std::uint16_t lane, Part part) const {
+const RegisterFile::Field* RegisterFile::find(std::uint16_t lane, Part part,
+                                              const Register** reg) const {
     const auto address = address_of_part_.find({lane, part});
-    if (address == address_of_part_.end()) return std::nullopt;
-    const Register& reg = registers_.at(address->second);
-    for (const Field& field : reg.fields) {
-        if (field.part == part) return (reg.value & field.mask) >> field.low_bit;
+    if (address == address_of_part_.end()) return nullptr;
+    *reg = &registers_.at(address->second);
+    for (const Field& field : (*reg)->fields) {
+        if (field.part == part) return &field;
     }
-    return std::nullopt;
+    return nullptr;
+}
+
+std::optional<std::uint32_t> RegisterFile::stored(std::uint16_t lane, Part part) const {
+    const Register* reg = nullptr;
+    const Field* field = find(lane, part, &reg);
+    if (field == nullptr) return std::nullopt;
+    return (reg->value & field->mask) >> field->low_bit;
+}
+
+std::uint32_t RegisterFile::top(std::uint16_t lane, Part part) const {
+    const Register* reg = nullptr;
+    const Field* field = find(lane, part, &reg);
+    return field == nullptr ? 0 : field->mask >> field->low_bit;
+}
+
+void RegisterFile::overwrite(std::uint16_t lane, Part part, std::uint32_t value) {
+    const Register* found = nullptr;
+    const Field* field = find(lane, part, &found);
+    if (field == nullptr) return;
+    Register& reg = registers_.at(address_of_part_.at({lane, part}));
+    reg.value = (reg.value & ~field->mask) | ((value << field->low_bit) & field->mask);
+}
+
+std::optional<std::uint16_t> RegisterFile::lane_of(std::uint32_t address) const {
+    const auto found = registers_.find(address);
+    if (found == registers_.end() || !found->second.per_lane) return std::nullopt;
+    return found->second.lane;
 }
 
 }  // namespace lanewright::sim

@@ -16,12 +16,12 @@ namespace lanewright::sim {
 class Hardware {
   public:
     virtual ~Hardware() = default;
-    // The present value of a status field (busy, closed, lock, up, down, left, right).
+    // The present value of a field that the chip makes: all but codes, settings and fixed values.
     virtual std::uint32_t status(std::uint16_t lane, Part part) = 0;
-    // A one was written to a strobe or trigger.
+    // A one was written to a strobe, trigger or count.
     virtual void started(std::uint16_t lane, Part part) = 0;
-    // A bank code was written.
-    virtual void code_written(std::uint16_t lane) = 0;
+    // A bank code, or a reading's number, was written.
+    virtual void written(std::uint16_t lane, Part part) = 0;
 };
 
 class RegisterFile {
@@ -41,6 +41,12 @@ class RegisterFile {
 
     // The stored value of the field that plays this part; empty where none does.
     std::optional<std::uint32_t> stored(std::uint16_t lane, Part part) const;
+    // The most that this field holds; 0 where none plays the part.
+    std::uint32_t top(std::uint16_t lane, Part part) const;
+    // Something else writes the field: no access rule, and the hardware is not told.
+    void overwrite(std::uint16_t lane, Part part, std::uint32_t value);
+    // The lane whose register it is; empty for one of the board, and where there is none.
+    std::optional<std::uint16_t> lane_of(std::uint32_t address) const;
 
   private:
     struct Field {
@@ -52,6 +58,7 @@ class RegisterFile {
     };
     struct Register {
         std::uint16_t lane = 0;
+        bool per_lane = false;
         std::uint32_t all = 0;
         bool readable = false, writable = false;
         std::uint32_t value = 0;
@@ -62,6 +69,7 @@ class RegisterFile {
                            const std::map<FieldName, std::uint32_t>& overrides,
                            const std::vector<int>& reset_codes) const;
     std::uint32_t present_value(const Register& reg, const Field& field);
+    const Field* find(std::uint16_t lane, Part part, const Register** reg) const;
 
     Hardware& hardware_;
     std::map<std::uint32_t, Register> registers_;

@@ -100,6 +100,8 @@ int run_serve(const ServeOptions& options) {
     }
     Loaded loaded = load(options.target_path);
     if (!loaded.target) return failed(exit_config, loaded.complaints);
+    const std::string problem = choose_board(*loaded.target, options.population_board);
+    if (!problem.empty()) return failed(exit_usage, "--population-board: " + problem);
     const TargetFile& target = *loaded.target;
 
     boost::asio::io_context io;
@@ -109,7 +111,9 @@ int run_serve(const ServeOptions& options) {
     Board board(time, loaded.side,
                 {.time_scale = target.time_scale,
                  .bit_rate_hz = target.grid.bit_rate_hz,
-                 .reset_codes = target.reset_codes},
+                 .reset_codes = target.reset_codes,
+                 .temperature_c = target.temperature.celsius,
+                 .chip = target.chip},
                 make_lane_models(target), random_boot_number());
     Hub hub(time, board, loaded.side, target.time_scale, stop);
     std::vector<std::unique_ptr<Server>> tcp, pty;

@@ -25,7 +25,11 @@ std::vector<double> element_factors(const BankSpec& spec, std::uint64_t seed, in
         KeyedRandom random(seed, Purpose::element_error,
                            {static_cast<std::uint64_t>(lane), static_cast<std::uint64_t>(bank),
                             static_cast<std::uint64_t>(element)});
-        factors.push_back(std::max(0.2, 1.0 + spec.error_sigma * random.normal()));
+        const double size =
+            element == 0 ? spec.fixed : spec.unit * static_cast<double>(1 << (element - 1));
+        const bool small = spec.kind == BankKind::capacitor && size < spec.small_below;
+        const double sigma = small ? spec.small_error_sigma : spec.error_sigma;
+        factors.push_back(std::max(0.2, 1.0 + sigma * random.normal()));
     }
     return factors;
 }

@@ -28,6 +28,8 @@ struct BankSpec {
     double switch_off_f = 0;  // of weight 1; off-capacitance·weight
     double plate_share = 0;   // bottom plate, share of the element, at each node; capacitors only
     double error_sigma = 0;   // relative error of an element, one standard deviation
+    double small_below = 0;   // farad: capacitors smaller than this have small_error_sigma
+    double small_error_sigma = 0;
 
     int codes() const { return 1 << bits; }
 };

@@ -31,7 +31,8 @@ PerMetre per_metre(const Line& line, double frequency_hz) {
     const double direct_ohm =
         1.0 / (line.conductivity_s_per_m * width_m * line.thickness_um * 1e-6);
     const double skin_ohm =
-        surface_resistance_ohm(frequency_hz, line.conductivity_s_per_m) / (width_m * line.faces);
+        surface_resistance_ohm(frequency_hz, line.conductivity_s_per_m) / (width_m * line.faces) *
+        roughness_factor(line.roughness_um, frequency_hz, line.conductivity_s_per_m);
     // (skin·(1+j))² = 2j·skin²
     const Complex internal_ohm =
         std::sqrt(Complex(direct_ohm * direct_ohm, 2.0 * skin_ohm * skin_ohm));
@@ -78,6 +79,15 @@ double surface_resistance_ohm(double frequency_hz, double conductivity_s_per_m) 
     return std::sqrt(pi * frequency_hz * mu0_h_per_m / conductivity_s_per_m);
 }
 
+double roughness_factor(double rms_um, double frequency_hz, double conductivity_s_per_m) {
+    if (rms_um <= 0 || frequency_hz <= 0) return 1.0;
+    // Rs = 1/(conductivity·depth)
+    const double depth_m =
+        1.0 / (conductivity_s_per_m * surface_resistance_ohm(frequency_hz, conductivity_s_per_m));
+    const double share = rms_um * 1e-6 / depth_m;
+    return 1.0 + 2.0 / pi * std::atan(1.4 * share * share);
+}
+
 Debye Debye::fitted(double permittivity, double loss_tangent, double at_hz) {
     const Complex shape =
         std::log10(Complex(f2_hz, at_hz) / Complex(f1_hz, at_hz)) / std::log10(f2_hz / f1_hz);
@@ -99,7 +109,9 @@ Complex propagation(const Line& line, double frequency_hz) {
     return std::sqrt(metre.impedance_ohm) * std::sqrt(metre.admittance_s) * line.length_mm * 1e-3;
 }
 
-Chain chain_of(const Line& line, double frequency_hz) {
+namespace {
+
+Chain uniform_chain(const Line& line, double frequency_hz) {
     const PerMetre metre = per_metre(line, frequency_hz);
     const double length_m = line.length_mm * 1e-3;
     const Complex x = propagation(line, frequency_hz);
@@ -109,8 +121,25 @@ Chain chain_of(const Line& line, double frequency_hz) {
             whole};
 }
 
+}  // namespace
+
+Chain chain_of(const Line& line, double frequency_hz) {
+    Line part = line;
+    part.steps.clear();
+    Chain whole;
+    double from_share = 0;
+    for (const ImpedanceStep& step : line.steps) {
+        part.length_mm = line.length_mm * (step.at_share - from_share);
+        whole = whole * uniform_chain(part, frequency_hz);
+        part.impedance_ohm = step.impedance_ohm;
+        from_share = step.at_share;
+    }
+    part.length_mm = line.length_mm * (1.0 - from_share);
+    return whole * uniform_chain(part, frequency_hz);
+}
+
 double matched_loss_db(const Line& line, double frequency_hz) {
-    const Scattering s = scattering_of(chain_of(line, frequency_hz), line.impedance_ohm);
+    const Scattering s = scattering_of(uniform_chain(line, frequency_hz), line.impedance_ohm);
     return -20.0 * std::log10(std::abs(s.s21));
 }
 

@@ -53,6 +53,14 @@ Scattering scattering_of(const Chain& chain, double reference_ohm);
 // Dielectric: wideband Debye with f1 = 1 kHz and f2 = 1 THz (Djordjevic, Biljic, Likar-Smiljanic,
 // Sarkar, IEEE Trans. EMC 43(4), 2001), so that loss and delay belong together. The permittivity
 // and loss tangent given hold at 1 GHz.
+// Roughness: the skin effect's resistance and reactance times 1 + (2/pi)·atan(1.4·(rms/depth)²)
+// (Hammerstad and Jensen, IEEE MTT-S Digest 1980, 407-409); acting on both keeps it near causal.
+// From the place of an ImpedanceStep on, as a share of the length, the line has its impedance.
+struct ImpedanceStep {
+    double at_share = 0.5;
+    double impedance_ohm = 50;
+};
+
 struct Line {
     double length_mm = 100;
     double impedance_ohm = 50;  // without loss, at 1 GHz
@@ -62,7 +70,12 @@ struct Line {
     double thickness_um = 17.5;
     double faces = 2;
     double conductivity_s_per_m = 5.8e7;
+    double roughness_um = 0;           // rms; 0: smooth
+    std::vector<ImpedanceStep> steps;  // in order of their places
 };
+
+// The factor of roughness on the skin effect's part.
+double roughness_factor(double rms_um, double frequency_hz, double conductivity_s_per_m);
 
 // Surface resistance of a thick conductor in ohm per square.
 double surface_resistance_ohm(double frequency_hz, double conductivity_s_per_m);
@@ -76,8 +89,9 @@ struct Debye {
     Complex at(double frequency_hz) const;
 };
 
-// Complex propagation over the whole length (nepers and radians). The line has no conductance at
-// direct current, so this is zero there.
+// Complex propagation over the whole length (nepers and radians), as if it had no steps: these
+// change the impedance and not what a wave loses. The line has no conductance at direct current,
+// so this is zero there.
 Complex propagation(const Line& line, double frequency_hz);
 Chain chain_of(const Line& line, double frequency_hz);
 

@@ -14,6 +14,8 @@
 
 #include "sim_target/physics/channel.hpp"
 #include "sim_target/physics/isi.hpp"
+#include "sim_target/physics/pulse.hpp"
+#include "sim_target/physics/slice.hpp"
 
 namespace lanewright::sim {
 
@@ -26,7 +28,7 @@ struct Margins {
     bool closed = true;
     double up_mv = 0, down_mv = 0, left_ui = 0, right_ui = 0;
     double centre_error_ratio = 0.5;
-    double noise_mv = 0;  // rms at the sampler, jitter not included
+    double noise_mv = 0;  // rms at the sampler, jitter and compression not included
     double height_mv() const { return up_mv + down_mv; }
     double width_ui() const { return left_ui + right_ui; }
 };
@@ -38,15 +40,6 @@ struct Required {
 // The smaller of 2·min(up, down)/height and 2·min(left, right)/width; 1 just passes.
 double score(const Margins& margins, const Required& required);
 
-// What disturbs the sampler: noise above zero, and random jitter of the sampling instant.
-// Jitter acts as noise in proportion to the waveform's slope, which depends on the data: the symbol
-// itself and its two neighbours are taken as they come, the slopes of all others by their mean
-// square. Right to first order in the jitter.
-struct Disturbance {
-    double noise_mv = 1;
-    double jitter_ui = 0;
-};
-
 // Where the sampler decides, beside the recovered phase and zero volts.
 struct Decision {
     double offset_mv = 0, phase_ui = 0;
@@ -54,54 +47,67 @@ struct Decision {
 
 class Eye {
   public:
-    explicit Eye(const Grid& grid) : grid_(grid), taps_(grid.window_ui) {}
+    explicit Eye(const Grid& grid);
 
-    // `pulse_mv`: one window, circular, samples_per_ui a unit interval.
+    // The neighbours' signal: each aggressor adds `size` times the pulse, which fill() puts in.
+    struct Crosstalk {
+        std::span<const double> pulse_mv;
+        std::span<const Aggressor> aggressors;
+    };
+    static constexpr std::size_t most_crosstalk = 2;  // kinds, each with a pulse of its own
+    // Pulses: one window, circular, samples_per_ui a unit interval.
     void fill(std::span<const double> pulse_mv, const Disturbance& disturbance,
-              const Decision& decision);
+              const Decision& decision, std::span<const Crosstalk> crosstalk = {});
 
-    // The recovered sampling phase without the decision's own offset: half a unit interval after
-    // the median crossing. The symbols around a transition are symmetric about zero, so the median
-    // of the waveform there is p(t − T) − p(t) and the crossing is where these two are equal. In
-    // unit intervals from the start of the window; of several the one with the largest cursor.
+    // The recovered sampling phase without the decision's own offset; see Pulse.
     double recovered_phase_ui() const { return recovered_ui_; }
-    double cursor_mv(double phase_ui) const { return pulse_at(phase_ui); }
+    double cursor_mv(double phase_ui) const { return pulse_.at(phase_ui); }
 
     // At a phase and threshold relative to the decision point.
     double error_ratio_at(double phase_ui, double offset_mv);
-    // error_ratio in (0, 0.1].
-    Margins margins(double error_ratio);
-    // A quick estimate of the score for ranking: interference of more than the noise by its worst
-    // case, smaller interference as noise.
+    // error_ratio in (0, 0.1]; `moved`: of the decision point, beside its own offsets.
+    Margins margins(double error_ratio, const Decision& moved = {});
+    // The level at the error ratio that the eye leaves free above (and, mirrored, below) zero
+    // volts at `phases` (from 2) phases from half a unit interval before to half after the
+    // recovered phase; below zero where it is closed.
+    std::vector<double> contour_mv(double error_ratio, std::size_t phases);
+    // A quick estimate of the score for ranking; see Slice::screening_level().
     double screening_score(const Required& required);
 
+    // What the ones and zeros do at a phase relative to the decision point, kept until the next
+    // fill() or until seven other phases have been asked for.
+    const Slice& slice_at(double phase_ui);
+
+    // Between the crossings that one in a thousand of the transitions comes before and one in a
+    // thousand comes after, interference and noise together, each side at most half a unit
+    // interval from the median crossing.
+    double crossing_spread_ui();
+
   private:
-    // What the ones are around, by the signs of the symbols before and after.
-    struct Surroundings {
-        double centre_mv = 0, jitter_mv = 0;
+    struct Kept {
+        Slice slice;
+        double phase_ui = 0;
+        unsigned used = 0;  // when, 0: never filled
     };
-    Surroundings surroundings(std::size_t index) const;
-    double pulse_at(double phase_ui) const;
-    double find_phase() const;
-    void take_taps(double phase_ui);  // fills taps_ (the cursor first) and slopes
-    void settle_at(double phase_ui);  // taps and their distribution at an absolute phase
-    double lost_ones(double threshold_mv) const;  // share of the ones that are below
-    double level_of_ones(double share) const;     // the threshold below which that share is
-    double ratio(double threshold_mv) const;
-    double edge_time_ui(double wanted, double at_centre, double side);
-    void open_heights(double error_ratio, Margins& margins) const;
+    struct Start {
+        double phase_ui = 0, offset_mv = 0;
+    };
+    const Slice& slice_at_absolute(double phase_ui);
+    double edge_time_ui(const Start& start, double wanted, double at_centre, double side);
+    double crossing_reach_ui(double side);
     double screening_level(double phase_ui, double deviate);
 
     Grid grid_;
-    std::vector<double> pulse_;
-    std::vector<double> taps_;
-    double slope_now_ = 0, slope_before_ = 0, slope_after_ = 0;  // of three taps, mV per UI
-    double slope_others_ = 0;                                    // squared and added up
-    std::array<Surroundings, 4> around_;
+    Pulse pulse_;
+    std::vector<Pulse> crosstalk_;
+    std::vector<Aggressor> aggressors_;
     Disturbance disturbance_;
-    double recovered_ui_ = 0;
     Decision decision_;
-    NoisyIsi isi_;
+    double recovered_ui_ = 0;
+    Slice work_;  // of phases on the way to an edge
+    std::array<Kept, 8> kept_;
+    unsigned clock_ = 0;
+    NoisyIsi crossing_;
 };
 
 }  // namespace lanewright::sim

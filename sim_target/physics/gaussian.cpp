@@ -9,7 +9,7 @@ namespace lanewright::sim {
 
 namespace {
 
-constexpr double table_reach = 9.0;
+constexpr double table_reach = 12.0;
 constexpr double table_steps = 64.0;  // a unit
 constexpr std::size_t table_size = static_cast<std::size_t>(2 * table_reach * table_steps) + 1;
 
@@ -33,9 +33,10 @@ std::array<TablePoint, table_size> make_table() {
 double quick_gaussian_tail(double x) {
     if (!(std::abs(x) < table_reach - 1.0 / table_steps)) return gaussian_tail(x);
     static const std::array<TablePoint, table_size> table = make_table();
-    const double place = std::round((x + table_reach) * table_steps);
-    const TablePoint& point = table[static_cast<std::size_t>(place)];
-    const double a = place / table_steps - table_reach;
+    // Rounded by hand: the library's rounding is a call.
+    const auto index = static_cast<std::size_t>((x + table_reach) * table_steps + 0.5);
+    const TablePoint& point = table[index];
+    const double a = static_cast<double>(index) * (1.0 / table_steps) - table_reach;
     const double d = x - a;
     const double a2 = a * a;
     const double series =

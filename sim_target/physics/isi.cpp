@@ -22,17 +22,19 @@ double peak_distortion(std::span<const double> other_taps) {
     return sum;
 }
 
-void NoisyIsi::fill(std::span<const double> other_taps, double noise_sigma) {
+void NoisyIsi::fill(std::span<const double> other_taps, double early_sigma, double late_sigma) {
     large_.clear();
-    double variance = noise_sigma * noise_sigma;
+    early_variance_ = early_sigma * early_sigma;
+    late_variance_ = late_sigma * late_sigma;
+    const double small = small_tap_share * std::sqrt(early_variance_ + late_variance_);
     for (const double tap : other_taps) {
-        if (std::abs(tap) > small_tap_share * noise_sigma)
+        if (std::abs(tap) > small)
             large_.push_back(std::abs(tap));
         else
-            variance += tap * tap;
+            early_variance_ += tap * tap;
     }
     std::sort(large_.begin(), large_.end());
-    sigma_ = std::sqrt(variance);
+    sigma_ = std::sqrt(early_variance_ + late_variance_);
     if (large_.size() <= exact_taps)
         enumerate();
     else
@@ -90,7 +92,18 @@ void NoisyIsi::convolve() {
         value_.push_back((static_cast<double>(i) - static_cast<double>(centre)) * step);
         weight_.push_back(work_[i]);
     }
-    sigma_ = std::sqrt(std::max(0.25 * sigma_ * sigma_, sigma_ * sigma_ - added_variance));
+    const double variance = sigma_ * sigma_;
+    const double left = std::max(0.25 * variance, variance - added_variance);
+    early_variance_ += left - variance;
+    sigma_ = std::sqrt(left);
+}
+
+double NoisyIsi::sigma_after(double slope, double more_sigma) const {
+    const double early = early_variance_ + more_sigma * more_sigma;
+    const double all = slope * slope * early + late_variance_;
+    // The grid's own variance may be more than the early noise: what is left after a stage is
+    // never less than a part of what would be there without it.
+    return std::sqrt(std::max(all, 0.25 * slope * slope * sigma_ * sigma_));
 }
 
 void NoisyIsi::finish() {
@@ -100,8 +113,8 @@ void NoisyIsi::finish() {
         sum_before_[i + 1] = sum_before_[i] + weight_[i];
 }
 
-double NoisyIsi::below(double level, double more_sigma) const {
-    const double sigma = std::sqrt(sigma_ * sigma_ + more_sigma * more_sigma);
+double NoisyIsi::below(double level, double more_sigma, double known) const {
+    const double sigma = sigma_after(1.0, more_sigma);
     const double scale = 1.0 / sigma;
     // Values more than eight sigma below the level are wholly below it.
     const auto certain =
@@ -110,7 +123,35 @@ double NoisyIsi::below(double level, double more_sigma) const {
     for (std::size_t i = static_cast<std::size_t>(certain); i < value_.size(); ++i) {
         const double tail = quick_gaussian_tail((value_[i] - level) * scale);
         // All the rest together weighs at most what is left of 1.
-        if (tail < 1e-10 * sum) break;
+        if (tail < 1e-10 * (sum + known)) break;
+        sum += weight_[i] * tail;
+    }
+    return sum;
+}
+
+double NoisyIsi::below(const Compression& stage, double centre, double threshold, double more_sigma,
+                       double known) const {
+    if (stage.none()) return below(threshold - centre, more_sigma, known);
+    // No sigma after the stage is larger than that before it.
+    const double most = sigma_after(1.0, more_sigma);
+    const double surely = stage.inverse(threshold - 8.0 * most) - centre;
+    const auto certain = static_cast<std::size_t>(
+        std::lower_bound(value_.begin(), value_.end(), surely) - value_.begin());
+    const double early = early_variance_ + more_sigma * more_sigma;
+    const double least = 0.25 * sigma_ * sigma_;
+    const double inverse_knee = 1.0 / stage.knee_mv;
+    double sum = sum_before_[certain];
+    for (std::size_t i = certain; i < value_.size(); ++i) {
+        // Compression's value and slope and sigma_after(), with what does not change taken out.
+        const double in = centre + value_[i];
+        const double share = in * inverse_knee;
+        const double gain2 = 1.0 / (1.0 + share * share);
+        const double slope2 = gain2 * gain2 * gain2;
+        const double variance = std::max(slope2 * early + late_variance_, slope2 * least);
+        const double out = in * std::sqrt(gain2) - threshold;
+        const double tail = quick_gaussian_tail(out / std::sqrt(variance));
+        // All the rest together weighs at most what is left of 1.
+        if (tail < 1e-8 * (sum + known)) break;
         sum += weight_[i] * tail;
     }
     return sum;

@@ -26,7 +26,20 @@ enum class Purpose : std::uint32_t {
     phase_offset = 3,
     latched_edge = 4,
     board_fault = 5,
-    board_telemetry = 6
+    board_telemetry = 6,
+    process_scale = 7,
+    crosstalk_phase = 8,
+    population_board = 9,
+    population_lane = 10,
+    monitor_fixed = 20,
+    monitor_position = 21,
+    monitor_look = 22,
+    monitor_event = 23,
+    monitor_drift = 24,
+    phase_wander = 25,
+    lock_landing = 26,
+    return_error = 27,
+    counted_errors = 28
 };
 
 class KeyedRandom {

@@ -69,6 +69,7 @@ void Network::solve(std::span<const int> codes, Solution& solution) const {
     const std::vector<Cx>& c2 = c2_[code(bank_c2)];
     const std::size_t points = drive_.size();
     solution.transfer.resize(points);
+    solution.from_input.resize(points);
 
     double resistor_sum = 0, input_sum = 0;
     for (std::size_t k = 0; k < points; ++k) {
@@ -76,7 +77,8 @@ void Network::solve(std::span<const int> codes, Solution& solution) const {
         const Cx input = input_[k] + r1[k].first + c1[k].first;
         const Cx output = output_[k] + r1[k].second + c1[k].second + r2[k] + c2[k];
         const Cx scale = inverse(input * output - between * between);
-        const Cx from_input = between * scale;  // volts at out per ampere into node a
+        const Cx from_input = between * scale;
+        solution.from_input[k] = from_input;
         solution.transfer[k] = from_input * drive_[k];
         // Half a bin at each end: the trapezoidal rule.
         const double weight = (k == 0 || k + 1 == points) ? 0.5 : 1.0;

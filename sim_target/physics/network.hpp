@@ -38,8 +38,9 @@ struct Noise {
 
 // What is solved for one set of codes.
 struct Solution {
-    std::vector<Cx> transfer;  // out over the transmitter's open-circuit voltage, each frequency
-    double noise_v2 = 0;       // input and resistor noise at out, differential, mean square
+    std::vector<Cx> transfer;    // out over the transmitter's open-circuit voltage, each frequency
+    std::vector<Cx> from_input;  // volts at out per ampere into node a
+    double noise_v2 = 0;         // input and resistor noise at out, differential, mean square
     double resistor_noise_v2 = 0;  // the resistors' part of it
 };
 

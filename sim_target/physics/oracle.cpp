@@ -3,92 +3,16 @@
 #include <algorithm>
 #include <array>
 #include <cmath>
-#include <cstdio>
-#include <numbers>
 #include <numeric>
 #include <stdexcept>
 
 #include "sim_target/physics/fourier.hpp"
 #include "sim_target/physics/keyed_random.hpp"
+#include "sim_target/physics/link.hpp"
 
 namespace lanewright::sim {
 
 namespace {
-
-constexpr double pi = std::numbers::pi;
-
-// Spectrum of one symbol as the transmitter sends it, in volts of open-circuit source voltage per
-// hertz and times the bin width, so that the inverse transform gives volts. Edge filter of IEEE
-// 802.3 Annex 93A, eq. (93A-46).
-std::vector<Cx> symbol_spectrum(const Grid& grid, const Transmitter& transmitter) {
-    std::vector<Cx> spectrum;
-    // Into a matched load half of the source's voltage remains, and a symbol is half the swing.
-    const double amplitude_v = transmitter.swing_mv * 1e-3;
-    for (std::size_t k = 0; k < grid.points(); ++k) {
-        const double f = grid.frequency_hz(k);
-        const double x = pi * f / grid.bit_rate_hz;
-        const double sinc = k == 0 ? 1.0 : std::sin(x) / x;
-        const double edge = std::exp(-2.0 * std::pow(pi * f * transmitter.rise_s / 1.6832, 2));
-        const double size = amplitude_v * sinc * edge * grid.step_hz() / grid.bit_rate_hz;
-        spectrum.emplace_back(std::polar(1.0, -x) * size);
-    }
-    return spectrum;
-}
-
-struct ChannelChains {
-    std::vector<Chain> chain;  // of the channel alone
-    double nyquist_loss_db = 0;
-    std::string note;
-};
-
-ChannelChains line_chains(const Grid& grid, const Line& line) {
-    ChannelChains channel;
-    for (std::size_t k = 0; k < grid.points(); ++k)
-        channel.chain.push_back(chain_of(line, grid.frequency_hz(k)));
-    channel.nyquist_loss_db = matched_loss_db(line, grid.bit_rate_hz / 2);
-    return channel;
-}
-
-Chain repeated(const Chain& chain, int times) {
-    Chain whole;
-    for (int i = 0; i < times; ++i) whole = whole * chain;
-    return whole;
-}
-
-MeasuredChannel measured(const TouchstoneChannel& source) {
-    const Touchstone data = read_touchstone(source.path);
-    if (data.ports == 2)
-        return MeasuredChannel::from_two_ports(data, source.differential, source.path);
-    return MeasuredChannel::from_four_ports(data, source.near, source.far, source.path);
-}
-
-ChannelChains file_chains(const Grid& grid, const TouchstoneChannel& source,
-                          std::span<const Cx> symbol) {
-    const MeasuredChannel channel = measured(source);
-    ChannelChains out;
-    double above = 0, all = 0;
-    for (std::size_t k = 0; k < grid.points(); ++k) {
-        const double f = grid.frequency_hz(k);
-        const Chain whole =
-            repeated(chain_of(channel.at(f), channel.reference_ohm()), source.repeat);
-        const double energy = std::norm(scattering_of(whole, channel.reference_ohm()).s21) *
-                              squared_size(symbol[k]) * (k == 0 ? 0.5 : 1.0);
-        all += energy;
-        if (f > channel.last_hz()) above += energy;
-        out.chain.push_back(whole);
-    }
-    const Chain nyquist = repeated(
-        chain_of(channel.at(grid.bit_rate_hz / 2), channel.reference_ohm()), source.repeat);
-    out.nyquist_loss_db =
-        -20.0 * std::log10(std::abs(scattering_of(nyquist, channel.reference_ohm()).s21));
-    std::array<char, 320> text{};
-    std::snprintf(text.data(), text.size(),
-                  "known from %.6g to %.6g GHz; extrapolated to direct current and beyond the last "
-                  "point, where %.3g %% of the pulse's energy lies",
-                  channel.first_hz() / 1e9, channel.last_hz() / 1e9, 100.0 * above / all);
-    out.note = source.path + ": " + text.data();
-    return out;
-}
 
 Decision decision_of(const TargetFile& target, int lane) {
     const auto lane_word = static_cast<std::uint64_t>(lane);
@@ -100,47 +24,64 @@ Decision decision_of(const TargetFile& target, int lane) {
     return decision;
 }
 
-Network network_of(const TargetFile& target, int lane, std::span<const Chain> channel) {
-    const Grid& grid = target.grid;
-    std::vector<Chain> source;
-    for (std::size_t k = 0; k < grid.points(); ++k) {
-        const Complex pad{0, 2.0 * pi * grid.frequency_hz(k) * target.transmitter.pad_f};
-        source.push_back(series_impedance(target.transmitter.source_ohm) * shunt_admittance(pad) *
-                         channel[k]);
-    }
+// Element errors are drawn for what the file says, before process and temperature scale it: an
+// element's error does not depend on how warm it is.
+Network network_of(const TargetFile& target, int lane, std::span<const Chain> source) {
     std::array<std::vector<double>, bank_count> factors;
     for (std::size_t bank = 0; bank < bank_count; ++bank)
         factors[bank] =
             element_factors(target.receiver.banks[bank], target.seed, lane, static_cast<int>(bank));
-    return Network(grid, source, target.receiver, target.noise, factors);
+    return Network(target.grid, source, receiver_at(target), target.noise, factors);
+}
+
+// The lane's aggressors of one kind, each with its size and its phase.
+std::vector<Aggressor> aggressors_of(const TargetFile& target, int lane, bool far_end) {
+    std::vector<Aggressor> aggressors;
+    const auto& sources = target.lanes[static_cast<std::size_t>(lane)].crosstalk;
+    for (std::size_t i = 0; i < sources.size(); ++i) {
+        if (sources[i].far_end != far_end) continue;
+        KeyedRandom random(target.seed, Purpose::crosstalk_phase,
+                           {static_cast<std::uint64_t>(lane), i});
+        const double drawn_ui = random.uniform();
+        aggressors.push_back({nullptr, std::pow(10.0, sources[i].coupling_db / 20.0),
+                              sources[i].phase_ui < 0 ? drawn_ui : sources[i].phase_ui});
+    }
+    return aggressors;
 }
 
 }  // namespace
 
 struct Oracle::Parts {
-    Parts(const TargetFile& target, int lane_number, ChannelChains channel,
-          std::vector<Cx> symbol_in)
+    Parts(const TargetFile& target, int lane_number, std::vector<Cx> symbol_in)
+        : Parts(target, lane_number, link_of(target, lane_number, symbol_in), symbol_in) {}
+
+    Parts(const TargetFile& target, int lane_number, LaneLink link, std::vector<Cx> symbol_in)
         : grid(target.grid),
           symbol(std::move(symbol_in)),
-          network(network_of(target, lane_number, channel.chain)),
+          coupled(coupling(target.grid, symbol)),
+          network(network_of(target, lane_number, link.source)),
           fourier(target.grid.samples()),
-          sampler_noise_mv(target.sampler_noise_mv),
-          sampler_jitter_ui(target.sampler_jitter_ui),
           decision(decision_of(target, lane_number)),
-          monitor(target.monitor),
+          far_aggressors(aggressors_of(target, lane_number, true)),
+          near_aggressors(aggressors_of(target, lane_number, false)),
+          near_s(1.0 / target.receiver.termination_ohm),
           lane(lane_number),
-          nyquist_loss_db(channel.nyquist_loss_db),
-          note(std::move(channel.note)) {
+          nyquist_loss_db(link.nyquist_loss_db),
+          note(std::move(link.note)) {
         for (const BankSpec& bank : target.receiver.banks) code_counts.push_back(bank.codes());
+        disturbance.late_mv = target.sampler_noise_mv;
+        disturbance.jitter_ui = target.sampler_jitter_ui;
+        disturbance.stage.knee_mv = target.lanes[static_cast<std::size_t>(lane_number)].knee_mv;
     }
 
     Grid grid;
-    std::vector<Cx> symbol;
+    std::vector<Cx> symbol, coupled;
     Network network;
     RealInverseFourier fourier;
-    double sampler_noise_mv, sampler_jitter_ui;
+    Disturbance disturbance;  // noise_mv depends on the codes
     Decision decision;
-    LatchedMonitor monitor;
+    std::vector<Aggressor> far_aggressors, near_aggressors;
+    double near_s;  // a near aggressor's wave of a volt is this current beside the channel
     int lane;
     double nyquist_loss_db;
     std::string note;
@@ -152,21 +93,44 @@ namespace {
 struct Workspace {
     Solution solution;
     std::vector<Cx> spectrum, work;
-    std::vector<double> wave;
+    std::vector<double> wave, far_wave, near_wave;
 };
 
+// `response`: volts at the equalizer's output for each frequency of `symbol`.
 template <class Parts>
-double solve_pulse(const Parts& parts, const std::vector<int>& codes, Workspace& space) {
+void transform(const Parts& parts, std::span<const Cx> response, std::span<const Cx> symbol,
+               double scale, Workspace& space, std::vector<double>& wave) {
+    space.spectrum.resize(symbol.size());
+    for (std::size_t k = 0; k < symbol.size(); ++k)
+        space.spectrum[k] = (1e3 * scale) * (response[k] * symbol[k]);
+    wave.resize(parts.grid.samples());
+    parts.fourier.run(space.spectrum, space.work, wave);
+}
+
+template <class Parts>
+void solve_pulse(const Parts& parts, const std::vector<int>& codes, Workspace& space) {
     if (!parts.network.has_codes(codes)) throw std::out_of_range("codes outside their banks");
     parts.network.solve(codes, space.solution);
-    const std::size_t points = parts.symbol.size();
-    space.spectrum.resize(points);
-    for (std::size_t k = 0; k < points; ++k)
-        space.spectrum[k] = 1e3 * (space.solution.transfer[k] * parts.symbol[k]);
-    space.wave.resize(parts.grid.samples());
-    parts.fourier.run(space.spectrum, space.work, space.wave);
-    return std::sqrt(space.solution.noise_v2 * 1e6 +
-                     parts.sampler_noise_mv * parts.sampler_noise_mv);
+    transform(parts, space.solution.transfer, parts.symbol, 1.0, space, space.wave);
+}
+
+template <class Parts>
+void fill_eye(const Parts& parts, const std::vector<int>& codes, Workspace& space, Eye& eye) {
+    solve_pulse(parts, codes, space);
+    Disturbance disturbance = parts.disturbance;
+    disturbance.noise_mv = std::sqrt(space.solution.noise_v2) * 1e3;
+    std::array<Eye::Crosstalk, Eye::most_crosstalk> crosstalk;
+    std::size_t kinds = 0;
+    if (!parts.far_aggressors.empty()) {
+        transform(parts, space.solution.transfer, parts.coupled, 1.0, space, space.far_wave);
+        crosstalk[kinds++] = {space.far_wave, parts.far_aggressors};
+    }
+    if (!parts.near_aggressors.empty()) {
+        transform(parts, space.solution.from_input, parts.coupled, parts.near_s, space,
+                  space.near_wave);
+        crosstalk[kinds++] = {space.near_wave, parts.near_aggressors};
+    }
+    eye.fill(space.wave, disturbance, parts.decision, {crosstalk.data(), kinds});
 }
 
 // Eye and buffers of this thread; their size follows the grid, which differs between targets.
@@ -180,8 +144,7 @@ Eye& filled_eye(const Parts& parts, const std::vector<int>& codes) {
         eye = std::make_unique<Eye>(parts.grid);
         eye_grid = parts.grid;
     }
-    const double noise_mv = solve_pulse(parts, codes, space);
-    eye->fill(space.wave, {noise_mv, parts.sampler_jitter_ui}, parts.decision);
+    fill_eye(parts, codes, space, *eye);
     return *eye;
 }
 
@@ -190,17 +153,59 @@ void check_ratio(double error_ratio) {
         throw std::invalid_argument("an error ratio above 0 and at most 0.1 is needed");
 }
 
+// Slices by phase are the eye's own cache; the spread is worked out once.
+class EyeOfCodes final : public EyeProbe {
+  public:
+    EyeOfCodes(std::unique_ptr<Eye> eye, const Decision& decision)
+        : eye_(std::move(eye)), decision_(decision), spread_ui_(eye_->crossing_spread_ui()) {}
+
+    double error_ratio(double phase_ui, double offset_mv, const Moment& moment) override {
+        return eye_->slice_at(phase_ui + moment.phase_ui)
+            .error_ratio(threshold_mv(offset_mv, moment));
+    }
+
+    Margins margins(double error_ratio, const Moment& moment) override {
+        check_ratio(error_ratio);
+        const Decision moved{threshold_mv(0, moment) - decision_.offset_mv, moment.phase_ui};
+        Margins margins = eye_->margins(error_ratio, moved);
+        margins.up_mv *= moment.gain;
+        margins.down_mv *= moment.gain;
+        margins.noise_mv *= moment.gain;
+        return margins;
+    }
+
+    double disagreement(double phase_ui, double offset_mv, const Moment& moment) override {
+        const double here_mv = threshold_mv(offset_mv, moment);
+        const double data_mv = threshold_mv(0, moment);
+        // Both lie in the cache of the eye: asking for the second does not touch the first.
+        const Slice& here = eye_->slice_at(phase_ui + moment.phase_ui);
+        const Slice& data = eye_->slice_at(moment.phase_ui);
+        const double wrong_here = here.error_ratio(here_mv);
+        const double wrong_data = data.error_ratio(data_mv);
+        const double both =
+            std::min({here.both_wrong(here_mv, data, data_mv), wrong_here, wrong_data});
+        return std::clamp(wrong_here + wrong_data - 2.0 * both, 0.0, 1.0);
+    }
+
+    double crossing_spread_ui() const override { return spread_ui_; }
+
+  private:
+    // The threshold at which the eye without the moment's gain would decide alike.
+    double threshold_mv(double offset_mv, const Moment& moment) const {
+        return (decision_.offset_mv + offset_mv + moment.offset_mv) / moment.gain;
+    }
+
+    std::unique_ptr<Eye> eye_;
+    Decision decision_;
+    double spread_ui_;
+};
+
 }  // namespace
 
 Oracle::Oracle(const TargetFile& target, int lane) {
     if (lane < 0 || static_cast<std::size_t>(lane) >= target.lanes.size())
         throw std::out_of_range("no such lane");
-    std::vector<Cx> symbol = symbol_spectrum(target.grid, target.transmitter);
-    const LaneChannel& channel = target.lanes[static_cast<std::size_t>(lane)];
-    ChannelChains chains = channel.touchstone
-                               ? file_chains(target.grid, *channel.touchstone, symbol)
-                               : line_chains(target.grid, channel.line);
-    parts_ = std::make_unique<const Parts>(target, lane, std::move(chains), std::move(symbol));
+    parts_ = std::make_unique<const Parts>(target, lane, symbol_spectrum(target, lane));
 }
 
 Oracle::~Oracle() = default;
@@ -228,12 +233,22 @@ std::vector<double> Oracle::pulse_mv(const std::vector<int>& codes) const {
     return space.wave;
 }
 
-int Oracle::lane() const {
-    return parts_->lane;
+std::vector<double> Oracle::contour_mv(const std::vector<int>& codes, double error_ratio,
+                                       std::size_t phases) const {
+    check_ratio(error_ratio);
+    if (phases < 2) throw std::invalid_argument("a contour has two phases or more");
+    return filled_eye(*parts_, codes).contour_mv(error_ratio, phases);
 }
 
-const LatchedMonitor& Oracle::monitor() const {
-    return parts_->monitor;
+std::unique_ptr<EyeProbe> Oracle::probe(const std::vector<int>& codes) const {
+    auto eye = std::make_unique<Eye>(parts_->grid);
+    Workspace space;
+    fill_eye(*parts_, codes, space, *eye);
+    return std::make_unique<EyeOfCodes>(std::move(eye), parts_->decision);
+}
+
+int Oracle::lane() const {
+    return parts_->lane;
 }
 
 const Decision& Oracle::decision() const {

@@ -21,7 +21,7 @@ namespace lanewright::sim {
 struct Moment {
     double phase_ui = 0;   // of the sampling phase: slow wander, where the loop landed
     double offset_mv = 0;  // of the decision threshold
-    double gain = 1;       // of the signal
+    double gain = 1;       // of the signal at the sampler, its noise with it; above 0
 };
 
 // One set of codes of one lane, solved once and then asked many times: what a monitor looks at.
@@ -36,7 +36,8 @@ class EyeProbe {
     // Share of bits in which a monitor's sampler at that place and the data sampler at its own
     // differ: what a monitor that compares with the receiver's decision counts.
     virtual double disagreement(double phase_ui, double offset_mv, const Moment& moment) = 0;
-    // Between the earliest and the latest crossing of the equalized waveform.
+    // Between the crossings of the equalized waveform that a thousandth of the transitions comes
+    // before and a thousandth comes after, interference and noise together; at most 1.
     virtual double crossing_spread_ui() const = 0;
 };
 
@@ -54,13 +55,15 @@ class Oracle {
     Margins margins(const std::vector<int>& codes, double error_ratio) const;
     double error_ratio_at(const std::vector<int>& codes, double phase_ui, double offset_mv) const;
     double screening_score(const std::vector<int>& codes, const Required& required) const;
+    // Levels at the error ratio across the eye; see Eye::contour_mv().
+    std::vector<double> contour_mv(const std::vector<int>& codes, double error_ratio,
+                                   std::size_t phases) const;
     // The oracle must outlive it.
     std::unique_ptr<EyeProbe> probe(const std::vector<int>& codes) const;
     // One window of the response to a single +1 symbol, differential millivolts.
     std::vector<double> pulse_mv(const std::vector<int>& codes) const;
 
     int lane() const;
-    const LatchedMonitor& monitor() const;
     const Decision& decision() const;
     std::vector<int> code_counts() const;
     std::size_t combinations() const;
@@ -87,19 +90,5 @@ std::vector<CodesScore> all_codes(const Oracle& oracle, const Required& required
 // best of these over neighbouring codes. Of equals the first in the order of codes_at().
 CodesScore best_codes(const Oracle& oracle, const Required& required, unsigned threads,
                       double share = 0.02);
-
-// What the chip's monitor would latch, in its steps. Closed or without lock: all zero.
-struct LatchedEdges {
-    int up = 0, down = 0, left = 0, right = 0;
-    bool closed = false;
-    bool locked = false;
-};
-
-// The true edges plus Gaussian noise, rounded to the nearest step and held inside the counters.
-// A dwell that cannot show the error ratio latches the edge of 1/dwell_bits instead (0: no limit).
-// The draw is keyed by (seed, lane, ordinal, codes, edge) and by nothing else.
-LatchedEdges latched_reading(const Oracle& oracle, const std::vector<int>& codes,
-                             double error_ratio, std::uint64_t dwell_bits, std::uint64_t seed,
-                             int lane, std::uint64_t ordinal);
 
 }  // namespace lanewright::sim

@@ -73,3 +73,17 @@ TEST_CASE("nominal elements come from the table and only from it") {
     CHECK_FALSE(space.nominal(9, 0));
     CHECK_FALSE(plain_space({4}).nominal(0, 1));
 }
+
+TEST_CASE("Codes can be left out of a space one by one, or be the only ones in it") {
+    const CodeSpace whole = plain_space({4, 4});
+    const Codes one{{1, 2}}, other{{3, 3}};
+    const CodeList listed{{one}, false}, only{{one}, true};
+    const CodeSpace without(whole.dimensions(), {}, std::make_shared<const CodeList>(listed));
+    const CodeSpace alone(whole.dimensions(), {}, std::make_shared<const CodeList>(only));
+    CHECK(whole.allows(one));
+    CHECK_FALSE(without.allows(one));
+    CHECK(without.allows(other));
+    CHECK(alone.allows(one));
+    CHECK_FALSE(alone.allows(other));
+    CHECK(without.size() == whole.size());
+}

@@ -1,5 +1,6 @@
 // Register transactions a second against the simulated board in a process of its own, over TCP
-// and over a pseudo-terminal at 921,600 baud, beside what the line itself allows.
+// and over a pseudo-terminal at 921,600 baud, beside what the line itself allows. And the bytes
+// that one look of a counted reading costs.
 
 #include <algorithm>
 #include <iostream>
@@ -10,40 +11,13 @@
 #include "drivers/board/make_link.hpp"
 #include "drivers/io/task_group.hpp"
 #include "tests/bench/rows.hpp"
+#include "tests/wire/counting_link.hpp"
 #include "tests/wire/target_process.hpp"
 
 using namespace lanewright;
 using namespace lanewright::tests;
 
 namespace {
-
-struct Traffic {
-    std::uint64_t sent = 0, received = 0;
-};
-
-// Passes everything on and counts it.
-class CountingLink final : public Link {
-  public:
-    CountingLink(std::unique_ptr<Link> inner, Traffic& traffic)
-        : inner_(std::move(inner)), traffic_(traffic) {}
-    Task<void> open(TimePoint deadline) override { return inner_->open(deadline); }
-    Task<std::size_t> read_some(std::span<std::byte> buffer) override {
-        auto size = co_await inner_->read_some(buffer);
-        if (size.has_value()) traffic_.received += *size;
-        co_return size;
-    }
-    Task<void> write(Bytes bytes) override {
-        traffic_.sent += bytes.size();
-        return inner_->write(std::move(bytes));
-    }
-    void close() noexcept override { inner_->close(); }
-    bool is_open() const override { return inner_->is_open(); }
-    const LinkTraits& traits() const override { return inner_->traits(); }
-
-  private:
-    std::unique_ptr<Link> inner_;
-    Traffic& traffic_;
-};
 
 Task<void> transact(Board& board, unsigned count) {
     for (unsigned i = 0; i < count; ++i) {
@@ -139,6 +113,98 @@ void measure_serial(bench::Rows& rows, const TargetProcess& process) {
     row("serial_share_of_line_eight_at_once", many.per_s / limit_many, "", 0.5, 0.9);
 }
 
+// Codes over the whole space, by a step that meets every bank.
+Codes codes_of(std::uint32_t number) {
+    const auto part = [number](std::uint32_t factor, std::uint32_t count) {
+        return static_cast<std::int32_t>((number * factor + 3) % count);
+    };
+    return {{part(11, 31), part(5, 16), part(7, 16), part(3, 8)}};
+}
+
+struct LookCost {
+    double bytes = 0, looks = 0, worst = 0;
+    std::uint64_t readings = 0;
+    void add(double reading_bytes, double reading_looks) {
+        bytes += reading_bytes;
+        looks += reading_looks;
+        worst = std::max(worst, reading_bytes / reading_looks);
+        ++readings;
+    }
+};
+
+// Readings that start from nothing, those that start where the last one found the edges, and those
+// of closed eyes.
+struct LookCosts {
+    LookCost afresh, expected, closed;
+};
+
+// One reading after another, so that every byte belongs to the one at hand.
+Task<void> count_bytes(Board& board, Traffic& traffic, LookCosts& costs) {
+    constexpr std::uint32_t codes_a_lane = 12;
+    Request request;
+    for (std::uint16_t lane = 0; lane < board.map().lane_count(); ++lane) {
+        for (std::uint32_t number = 0; number < codes_a_lane; ++number) {
+            request.codes = codes_of(lane + 8 * number);
+            MarginWanted wanted;
+            wanted.error_ratio = 1e-6;
+            wanted.dwell_bits = std::uint64_t{1} << 31;
+            for (std::uint32_t again = 0; again < 2; ++again) {
+                request.what = wanted;
+                const std::uint64_t before = traffic.both();
+                const std::uint32_t ordinal = 2 * number + again + 1;
+                auto got = co_await board.lanes().read(Lane{lane}, request, ordinal);
+                if (got.has_error()) co_return got.error();
+                const Reading& reading = got->reading;
+                const auto looks = static_cast<double>(reading.counts.size());
+                const auto bytes = static_cast<double>(traffic.both() - before);
+                if (reading.status == Status::closed) costs.closed.add(bytes, looks);
+                if (reading.status != Status::open) break;
+                (again == 0 ? costs.afresh : costs.expected).add(bytes, looks);
+                wanted.expected.up_mv = reading.up_mv->value;
+                wanted.expected.down_mv = reading.down_mv->value;
+                wanted.expected.left_ui = reading.left_ui->value;
+                wanted.expected.right_ui = reading.right_ui->value;
+            }
+        }
+    }
+    co_return Result<void>{};
+}
+
+// All bytes of a reading, its codes, origin and telemetry among them, shared out over its looks.
+void measure_counted(bench::Rows& rows, const TargetProcess& process) {
+    boost::asio::io_context io;
+    SteadyTimeSource time(io);
+    Traffic traffic;
+    const BoardFile file = demo_counted_board(process.tcp(), 2000);
+    auto link = std::make_unique<CountingLink>(make_link(time, file.link), traffic);
+    auto board = run_until_done(time, open_board(file, std::move(link), time)).value();
+    LookCosts costs;
+    run_until_done(time, count_bytes(*board, traffic, costs)).value();
+    run_until_done(time, board->close()).value();
+    const auto row = [&rows](const std::string& name, double value, std::uint64_t n,
+                             std::optional<double> must, const char* unit) {
+        rows.row({.name = name,
+                  .value = value,
+                  .unit = unit,
+                  .better = bench::Better::less,
+                  .must = must,
+                  .aim = std::nullopt,
+                  .n = n,
+                  .seed = 1});
+    };
+    const auto rows_of = [&row](const std::string& name, const LookCost& cost,
+                                std::optional<double> must) {
+        if (cost.readings == 0) return;
+        const auto readings = static_cast<double>(cost.readings);
+        row(name + "_bytes_a_look", cost.bytes / cost.looks, cost.readings, must, "B");
+        row(name + "_bytes_worst", cost.worst, cost.readings, std::nullopt, "B");
+        row(name + "_looks_a_reading", cost.looks / readings, cost.readings, std::nullopt, "");
+    };
+    rows_of("counted_afresh", costs.afresh, 50);
+    rows_of("counted_expected", costs.expected, 50);
+    rows_of("counted_closed", costs.closed, std::nullopt);
+}
+
 }  // namespace
 
 int main() {
@@ -149,5 +215,8 @@ int main() {
     bench::Rows rows(std::cout);
     measure_tcp(rows, process);
     measure_serial(rows, process);
+    target["time_scale"] = 0;
+    const TargetProcess counting(target);
+    measure_counted(rows, counting);
     return rows.finish();
 }

@@ -65,6 +65,10 @@ struct StartOptions {
     std::string store = "store.db";
     unsigned threads = 1;
     Recipe recipe = demo_recipe();
+    BoardFile board = demo_board();
+    std::string condition;
+    // Off where a test is about something else: it takes readings of its own.
+    bool preflight = false, only_preflight = false;
     // Sees each event once it is durable; may ask for a stop.
     std::function<void(const StoredEvent&, Stop&)> on_event;
 };
@@ -113,7 +117,10 @@ class EngineBench {
                     [&board] { return LinkCounts{0, 0, 0, 0, board.resets}; },
                     [&out](const std::string& text) { out.said.push_back(text); }};
         TuneRequest request;
-        request.board = demo_board();
+        request.board = options.board;
+        request.condition = options.condition;
+        request.preflight = options.preflight;
+        request.only_preflight = options.only_preflight;
         request.recipe = options.recipe;
         request.lanes = options.lanes;
         request.link = text_of(link);
@@ -127,6 +134,7 @@ class EngineBench {
         }
         board_codes = board.codes_;
         log = board.log;
+        most_at_once = board.most_at_once;
         note_path = endpoint->note_path();
         return out;
     }
@@ -134,6 +142,7 @@ class EngineBench {
     TemporaryFolder folder;
     std::map<std::uint16_t, Codes> board_codes;
     std::vector<std::string> log;
+    std::size_t most_at_once = 0;
     std::string note_path;
     std::uint32_t serial = 7;
 

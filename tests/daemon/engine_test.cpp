@@ -24,11 +24,12 @@ std::map<std::uint16_t, Codes> decisions(const Start& start) {
     return out;
 }
 
-// Every reading as it was stored: lane, ordinal, codes and the four values.
+// Every reading of strategies and comparisons as it was stored: lane, ordinal, codes and a value.
 std::vector<std::string> readings(const Start& start) {
     std::vector<std::string> out;
     for (const auto& [lane, state] : start.state.lanes) {
         for (const LaneReadingRecord& record : state.readings) {
+            if (record.stage == Stage::reference) continue;  // one more after each reset
             std::string text = std::to_string(lane) + "#" + std::to_string(record.ordinal);
             for (const auto code : record.reading.codes.value) text += " " + std::to_string(code);
             text += " " + std::to_string(record.reading.up_mv->value);

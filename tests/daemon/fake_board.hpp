@@ -35,6 +35,20 @@ class FakeBoard : public LaneReader {
 
     std::uint64_t resets = 0;
 
+    // What makes a preflight item fail.
+    std::vector<StatusItem> status_items;  // of every lane, unless `status_of` says more
+    std::function<void(Lane, std::vector<StatusItem>&)> status_of;
+    double sigma_scale = 1;      // of the monitor's noise
+    double return_sigma_mv = 0;  // of each coming back to codes, on top
+    double settling_mv = 0;      // off by so much without a wait, and ...
+    double settling_s = 1e-3;    // ... less by a factor e each
+    double crosstalk_mv = 0;     // narrower by so much beside another lane's reading
+    double after_reset_mv = 0;   // narrower by so much once it has reset
+    double drift_mv = 0;         // narrower by so much with every reading of the lane
+    bool smaller_at_higher_ratio = false;
+    enum class Counts { right, few_far_outside, other_bits, not_rising } counting = Counts::right;
+    std::size_t most_at_once = 0;  // lanes that were being read at the same time
+
     void reset() {
         ++resets;
         for (auto& [lane, codes] : codes_) codes = reset_codes();
@@ -72,14 +86,42 @@ class FakeBoard : public LaneReader {
         co_return Applied{codes, true, {}};
     }
 
+    Task<std::vector<StatusItem>> status(Lane lane) override {
+        if (Fault fault = asked("status", lane); fault.cause != Cause::none) co_return fault;
+        std::vector<StatusItem> out = status_items;
+        if (status_of) status_of(lane, out);
+        co_return out;
+    }
+
     Task<LaneReading> read(Lane lane, Request request, std::uint32_t ordinal) override {
+        most_at_once = std::max(most_at_once, ++reading_now_);
+        const bool alone = reading_now_ == 1;
         co_await time_.sleep_until(time_.now() + std::chrono::milliseconds(100));
+        const bool beside = !alone || reading_now_ > 1;
+        --reading_now_;
         if (Fault fault = asked("read", lane, ordinal); fault.cause != Cause::none) co_return fault;
+        History& history = history_[number(lane)];
+        if (codes_.at(number(lane)) != request.codes) ++history.visits;
+        const bool back = codes_.at(number(lane)) != request.codes;
         codes_.at(number(lane)) = request.codes;
+        ++history.readings;
         LaneReading out;
-        out.reading = latched_reading({2, 0.015625, 511, 127, 1.0, 0.006},
-                                      edges(number(lane), request.codes, ordinal),
-                                      std::get<MarginWanted>(request.what));
+        if (const auto* looks = std::get_if<LooksWanted>(&request.what)) {
+            out.reading.status = Status::open;
+            for (const Look& look : looks->looks) out.reading.counts.push_back(count_at(look));
+        } else {
+            const auto& wanted = std::get<MarginWanted>(request.what);
+            double off_mv = beside ? -crosstalk_mv : 0;
+            off_mv -= drift_mv * history.readings;
+            if (resets > 0) off_mv -= after_reset_mv;
+            off_mv +=
+                return_sigma_mv * Random(RandomKey{78, number(lane), 9, history.visits}).normal();
+            if (back) off_mv -= settling_mv * std::exp(-request.wait_s / settling_s);
+            if (smaller_at_higher_ratio && wanted.error_ratio > 1e-4) off_mv -= 40;
+            out.reading =
+                latched_reading({2, 0.015625, 511, 127, 1.0, 0.006},
+                                edges(number(lane), request.codes, ordinal, off_mv), wanted);
+        }
         out.reading.codes = request.codes;
         WireOperation op;
         op.kind = WireOperation::Kind::write;
@@ -104,13 +146,30 @@ class FakeBoard : public LaneReader {
     }
 
   private:
+    struct History {
+        std::uint32_t readings = 0, visits = 0;
+    };
+
+    Count count_at(Look look) const {
+        Count out;
+        if (counting == Counts::other_bits) look.bits /= 2;
+        out.look = look;
+        const double far = std::abs(look.offset_mv);
+        double ratio = 0.5 * std::clamp((far - 60) / 60, 0.0, 1.0);
+        if (counting == Counts::few_far_outside && far > 200) ratio = 0.1;
+        if (counting == Counts::not_rising && far > 100 && far < 200) ratio = 0.001;
+        out.errors = static_cast<std::uint64_t>(ratio * static_cast<double>(look.bits));
+        return out;
+    }
+
     Fault asked(const std::string& what, Lane lane, std::uint32_t ordinal = 0) {
         log.push_back(what + " " + std::to_string(number(lane)) +
                       (what == "read" ? " #" + std::to_string(ordinal) : ""));
         return before_operation ? before_operation(what, lane) : Fault{};
     }
 
-    static LatchedEdges edges(std::uint16_t lane, const Codes& codes, std::uint32_t ordinal) {
+    LatchedEdges edges(std::uint16_t lane, const Codes& codes, std::uint32_t ordinal,
+                       double off_mv) const {
         const Codes best = best_codes(lane);
         double distance = 0;
         for (std::size_t i = 0; i < 4; ++i) {
@@ -122,17 +181,19 @@ class FakeBoard : public LaneReader {
         Random noise(RandomKey{77, lane, 9, ordinal});
         const auto steps = [&](double value, double step, double sigma) {
             return static_cast<std::int32_t>(
-                std::lround(std::max(0.0, value + sigma * noise.normal()) / step));
+                std::lround(std::max(0.0, value + sigma_scale * sigma * noise.normal()) / step));
         };
         LatchedEdges out;
-        out.up = steps(half_mv, 2, 1.0);
-        out.down = steps(half_mv, 2, 1.0);
+        out.up = steps(half_mv + off_mv, 2, 1.0);
+        out.down = steps(half_mv + off_mv, 2, 1.0);
         out.left = steps(half_ui, 0.015625, 0.006);
         out.right = steps(half_ui, 0.015625, 0.006);
         return out;
     }
 
     TimeSource& time_;
+    std::map<std::uint16_t, History> history_;
+    std::size_t reading_now_ = 0;
 };
 
 }  // namespace lanewright::test

@@ -41,6 +41,11 @@ ReadingTaken full_reading(std::uint32_t ordinal) {
     reading.error_ratio = 1e-6;
     reading.centre_error_ratio = 0.25;
     reading.counts = {{{0.125, -7.5, 1u << 30}, 17, true}};
+    reading.slopes = EdgeSlopes{{-4.9, 0.1 + 0.2, Bound::exact},
+                                {-5.1, 1e-300, Bound::at_most},
+                                {-0.02, 1.0 / 3.0, Bound::exact},
+                                {-0.019, 0.001, Bound::at_least}};
+    reading.telemetry = {{"supply_v", 0.9}, {"die_temperature_c", -1.0 / 3.0}};
     reading.bit_count = 1ull << 40;
     reading.cost_s = 0.0871;
     WireOperation op;
@@ -64,7 +69,8 @@ std::vector<Event> one_of_each() {
     looks.why = "why \xC3\xA9";
     Request margin;
     margin.codes = {{1, 2, 3}};
-    margin.what = MarginWanted{1e-6, 1ull << 31};
+    margin.what = MarginWanted{1e-6, 1ull << 31, {31, 30, 0.25, 0.26}};
+    margin.wait_s = 0.1 + 0.2;
     Decision decision;
     decision.codes = {{4, 5, 6}};
     decision.unchanged = true;
@@ -74,22 +80,40 @@ std::vector<Event> one_of_each() {
     decision.standard_readings = 9.5;
     decision.bench_s = 0.9;
     RunEnded ended;
+    PreflightItem item;
+    item.lane = Lane{3};
+    item.name = "repeatability";
+    item.result = ItemResult::passed;
+    item.found = "sigma of one edge";
+    item.expected = "at most 2 mV";
+    item.values = {{"height_sigma_mv", 1.0 / 3.0}};
+    item.codes = Codes{{1, 2, 3}};
+    item.settings = "error ratio 1e-06, 2147483648 bits";
+    item.from = "run-0";
     ended.ending = Ending::wall_limit;
     ended.reason = "over";
     ended.link = {1, 2, 3, 4, 5};
     ended.wall_s = 1.25;
-    return {Identified{{{{"chip", 1}}, true}},
-            LaneSaved{saved},
-            Intent{Lane{3}, 0, 0, Stage::search, looks},
-            Intent{Lane{3}, 1, 2, Stage::compare, margin},
-            full_reading(1),
-            ReadingVoid{Lane{3}, 2, 1, "reset"},
-            LaneDecided{Lane{3}, decision},
-            LaneSettled{Lane{3}, Settlement::decided, {{4, 5, 6}}},
-            LaneFinished{Lane{3}, LaneOutcome::unchanged, "kept"},
-            RunResumed{123, "again"},
-            ended,
-            CodesWritten{Lane{3}, {{7, 8, 9}}, "by hand"}};
+    return {
+        Identified{{{{"chip", 1}}, true}},
+        LaneSaved{saved},
+        Intent{Lane{3}, 0, 0, Stage::search, looks},
+        Intent{Lane{3}, 1, 2, Stage::compare, margin},
+        full_reading(1),
+        ReadingVoid{Lane{3}, 2, 1, "reset", {}},
+        ReadingVoid{Lane{3}, 2, 2, "expected 9, found 3", "EQ_R1.code"},
+        LaneDecided{Lane{3}, decision},
+        LaneSettled{Lane{3}, Settlement::decided, {{4, 5, 6}}},
+        LaneSettled{Lane{3}, Settlement::given_up, {{4, 5, 6}}},
+        LaneFinished{Lane{3}, LaneOutcome::unchanged, "kept"},
+        RunResumed{123, "again"},
+        ended,
+        CodesWritten{Lane{3}, {{7, 8, 9}}, "by hand"},
+        item,
+        PreflightItem{{}, "lock", ItemResult::failed, "lane 3: 0", "1", "mend it", {}, {}, {}, {}},
+        PreflightBegun{Lane{3}, {"repeatability", "settle_time"}},
+        NoiseChosen{Lane{3}, {2, 1.0 / 64, 0.1 + 0.2, 0.006, 0.4, 0.003}, "run-0"},
+        LaneReset{Lane{3}}};
 }
 
 }  // namespace
@@ -122,6 +146,11 @@ TEST_CASE("Every kind of event comes back from the store as it went in") {
     CHECK_FALSE(is.reading.down_mv);
     CHECK(is.reading.left_ui == was.reading.left_ui);
     CHECK(is.reading.counts == was.reading.counts);
+    CHECK(is.reading.slopes == was.reading.slopes);
+    CHECK(is.reading.telemetry == was.reading.telemetry);
+    CHECK(std::get<Intent>(stored[3].event).request.wait_s == 0.1 + 0.2);
+    CHECK(std::get<Intent>(stored[3].event).request.what ==
+          std::get<Intent>(events[3]).request.what);
     CHECK(is.reading.centre_error_ratio == was.reading.centre_error_ratio);
     CHECK(is.reading.bit_count == was.reading.bit_count);
     CHECK(is.reading.cost_s == was.reading.cost_s);
@@ -140,6 +169,47 @@ TEST_CASE("A reading of one lane and ordinal cannot be stored twice") {
     database.append({&first});
     CHECK_THROWS_AS(database.append({&second}), StoreError);
     CHECK(database.events("run-1", 0, 10).size() == 1);
+}
+
+TEST_CASE(
+    "A store of format 1 is read as it is, and brought up to date behind a copy for writing") {
+    TemporaryFolder folder;
+    const std::string path = folder / "s.db";
+    {
+        Database database(path, Database::Mode::read_write);
+        database.add_run(small_manifest("run-1"));
+        NewEvent old{"run-1", 1, full_reading(5), 0};
+        database.append({&old});
+    }
+    {
+        SQLite::Database raw(path, SQLite::OPEN_READWRITE);
+        raw.exec("ALTER TABLE readings DROP COLUMN slopes");
+        raw.exec("ALTER TABLE readings DROP COLUMN telemetry");
+        raw.exec("PRAGMA user_version = 1");
+    }
+    const auto reading_of = [](const Database& database, std::size_t index) {
+        return std::get<ReadingTaken>(database.events("run-1", 0, 10).at(index).event).reading;
+    };
+    const Reading was = full_reading(5).reading;
+    {
+        const Database old(path, Database::Mode::read_only);
+        CHECK(reading_of(old, 0).counts == was.counts);
+        CHECK_FALSE(reading_of(old, 0).slopes);
+        CHECK_FALSE(std::filesystem::exists(path + ".format1"));
+    }
+    Database now(path, Database::Mode::read_write);
+    CHECK(reading_of(now, 0).up_mv == was.up_mv);
+    CHECK_FALSE(reading_of(now, 0).slopes);
+    NewEvent next{"run-1", 2, full_reading(6), 0};
+    now.append({&next});
+    CHECK(reading_of(now, 1).slopes == was.slopes);
+    CHECK(reading_of(now, 1).telemetry == was.telemetry);
+    const Database copy(path + ".format1", Database::Mode::read_only);
+    CHECK(reading_of(copy, 0).counts == was.counts);
+    SQLite::Database raw_copy(path + ".format1", SQLite::OPEN_READONLY);
+    CHECK(raw_copy.execAndGet("PRAGMA user_version").getInt() == 1);
+    SQLite::Database raw(path, SQLite::OPEN_READONLY);
+    CHECK(raw.execAndGet("PRAGMA user_version").getInt() == 2);
 }
 
 TEST_CASE("A run is found by its id, by a prefix of just one, or as the latest") {
@@ -202,7 +272,7 @@ TEST_CASE("Appends that wait together share a commit and keep their own order") 
         static Task<void> many(Store* into, std::uint16_t lane) {
             for (std::uint32_t i = 0; i < 50; ++i) {
                 std::vector<Event> one;
-                one.push_back(ReadingVoid{Lane{lane}, i, 0, "x"});
+                one.push_back(ReadingVoid{Lane{lane}, i, 0, "x", {}});
                 auto stored = co_await into->append("run-1", std::move(one));
                 if (!stored) co_return stored.error();
             }

@@ -52,6 +52,26 @@ TEST_CASE("codes are written as masked fields, each with read-back, and may be r
     CHECK(batch.repeatable());
 }
 
+TEST_CASE("a write joins the last one only where that is to other bits of the same register") {
+    const RegisterMap map(small_counted_board());
+    Batch batch;
+    REQUIRE(good(map.write_joined(batch, Lane{1}, {"POINT", "phase"}, 70)));
+    REQUIRE(good(map.write_joined(batch, Lane{1}, {"POINT", "offset"}, 300)));
+    REQUIRE(batch.size() == 1);
+    CHECK(write_at(batch, 0) == Write{0x14D, 0xFFFF, 70 << 9 | 300, 32, true});
+    REQUIRE(good(map.write_joined(batch, Lane{1}, {"POINT", "offset"}, 301)));
+    CHECK(batch.size() == 2);  // the same bits once more
+    REQUIRE(good(map.write_joined(batch, Lane{0}, {"POINT", "phase"}, 1)));
+    CHECK(batch.size() == 3);  // another lane's register
+    const auto refused = map.write_joined(batch, Lane{0}, {"POINT", "offset"}, 512);
+    REQUIRE(!refused);
+    CHECK(refused.error().cause == Cause::not_allowed);
+    CHECK(write_at(batch, 2) == Write{0x10D, 0xFE00, 1 << 9, 32, true});
+    REQUIRE(good(map.write_declared(batch, Lane{0}, {"COUNT", "go"}, 1)));
+    REQUIRE(good(map.write_joined(batch, Lane{0}, {"POINT", "offset"}, 2)));
+    CHECK(batch.size() == 5);  // something stands between
+}
+
 TEST_CASE("codes outside their limits or of the wrong number are refused by name and limit") {
     const RegisterMap map(small_board());
     Batch batch;

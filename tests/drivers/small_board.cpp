@@ -110,4 +110,62 @@ BoardFile small_board() {
     return board;
 }
 
+namespace {
+
+WriteStep write_changed(const char* reg_name, const char* name, Parameter parameter) {
+    return {{reg_name, name}, parameter, true};
+}
+
+void add_counted_registers(RegisterMapDescription& map) {
+    const auto ro = Access::read_only;
+    const auto rw = Access::read_write;
+    const std::vector<RegisterDescription> more = {
+        reg("HEAT", 6, 16, false, {field("value", 11, 0, Role::none, ro)}),
+        reg("GUARD", 8, 32, false, {field("value", 31, 0, Role::scratch, rw)}),
+        reg("POINT", 13, 32, true,
+            {field("offset", 8, 0, Role::control, rw), field("phase", 15, 9, Role::control, rw)}),
+        reg("COUNT", 14, 8, true, {field("go", 0, 0, Role::control, Access::self_clearing)}),
+        reg("ERRORS", 15, 32, true,
+            {field("count", 23, 0, Role::none, ro), field("full", 31, 31, Role::none, ro)}),
+        reg("BITS", 16, 16, true, {field("log2", 5, 0, Role::none, ro)}),
+        reg("ORIGIN", 17, 32, true,
+            {field("offset", 8, 0, Role::none, ro), field("phase", 15, 9, Role::none, ro)}),
+        reg("TAG", 18, 16, true, {field("value", 7, 0, Role::none, ro)}),
+    };
+    map.registers.insert(map.registers.end(), more.begin(), more.end());
+}
+
+}  // namespace
+
+BoardFile small_counted_board() {
+    BoardFile board = small_board();
+    add_counted_registers(board.map);
+    board.telemetry = {{"heat_c", {"HEAT", "value"}, 0.25, -64}};
+    MonitorDescription& monitor = board.monitor;
+    monitor.procedure = MonitorProcedure::counted;
+    monitor.sequence.clear();
+    monitor.height = {2.0, 0.1, 255, 0, 256, 0};
+    monitor.width = {1.0 / 64, 0.1, 63, 0, 64, 0};
+    monitor.lowest_error_ratio = 0;
+    CountedDescription& counted = monitor.counted;
+    counted.least_bits = 1 << 10;
+    counted.most_bits = std::uint64_t{1} << 40;
+    counted.bits_by_powers_of_two = true;
+    counted.most_errors = 0xFFFFFF;
+    counted.begin = {WriteStep{{"NOTE", "value"}, Parameter::ordinal}};
+    counted.origin.sequence = {ReadStep{{"ORIGIN", "offset"}, "offset"},
+                               ReadStep{{"ORIGIN", "phase"}, "phase"}};
+    WaitStep done = wait("MONITOR", "busy", 0, 10);
+    done.plus_dwell = true;
+    counted.look = {write_changed("SETUP", "dwell_log2", Parameter::dwell_log2),
+                    write_changed("POINT", "phase", Parameter::phase_code),
+                    write_changed("POINT", "offset", Parameter::offset_code),
+                    WriteStep{{"COUNT", "go"}, 1u},
+                    done,
+                    ReadStep{{"ERRORS", "count"}, "errors"},
+                    ReadStep{{"ERRORS", "full"}, "saturated"},
+                    ReadStep{{"BITS", "log2"}, "bits_log2"}};
+    return board;
+}
+
 }  // namespace lanewright::test

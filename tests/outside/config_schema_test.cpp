@@ -12,6 +12,7 @@
 #include <vector>
 
 #include "daemon/engine/recipe.hpp"
+#include "daemon/replay/columns.hpp"
 #include "drivers/config/board_file.hpp"
 #include "sim_target/target_file.hpp"
 
@@ -109,6 +110,15 @@ TEST_CASE("schema and decoder agree on the corpus of recipes") {
     compare("recipes", "recipe.schema.json", [](const std::string& path) {
         Complaints complaints;
         static_cast<void>(load_recipe(path, complaints));
+        return complaints.text();
+    });
+}
+
+TEST_CASE("schema and decoder agree on the corpus of column maps") {
+    REQUIRE(json_files(source_dir + "/tests/corpus/columns/bad").size() >= 8);
+    compare("columns", "columns.schema.json", [](const std::string& path) {
+        Complaints complaints;
+        static_cast<void>(load_columns(path, complaints));
         return complaints.text();
     });
 }

@@ -2,6 +2,7 @@
 
 #include <catch2/catch.hpp>
 #include <cmath>
+#include <cstdio>
 #include <cstdlib>
 #include <numbers>
 #include <vector>
@@ -161,6 +162,37 @@ TEST_CASE("the skin-effect pulse has its published cursor, tail and worst eye") 
         if (ui != 1) others += std::abs(ten[ui * 64]);
     CHECK(ten[64] == Approx(0.51598471).margin(1e-4));
     CHECK(ten[64] - others == Approx(0.031969416).margin(3e-4));
+}
+
+// The taps that matter, and what all the others add up to from the closed form: with unit gain at
+// direct current and no precursor all taps add up to 1, so those after tap n to 1 − step(n·T).
+TEST_CASE("taps under a thousandth of the cursor add up to what the closed form says") {
+    const Grid grid = fine_grid();
+    for (const double loss_db : {6.0, 10.0}) {
+        const std::vector<double> wave = pulse_of(skin_line(loss_db, 4e9), grid);
+        const double k = loss_db / neper_db / std::sqrt(pi * 4e9);
+        const auto step = [&](double ui) { return std::erfc(k / (2 * std::sqrt(ui * 125e-12))); };
+        const double cursor = wave[64];
+        double kept = 0;
+        std::size_t last = 1;
+        for (std::size_t ui = 2; ui < grid.window_ui; ++ui) {
+            if (std::abs(wave[ui * 64]) < 1e-3 * cursor) break;
+            kept += std::abs(wave[ui * 64]);
+            last = ui;
+        }
+        const double neglected = 1 - step(static_cast<double>(last));
+        double tail = 0;
+        for (std::size_t ui = last + 1; ui < grid.window_ui; ++ui) tail += wave[ui * 64];
+        const double worst = cursor - kept - neglected;
+        std::printf("%g dB: %zu taps kept, %.6f of all neglected, worst case %.6f\n", loss_db, last,
+                    neglected, worst);
+        CHECK(last < 200);
+        CHECK(neglected > 0.01);
+        // The periodic window keeps the tail's sum; up to 64 taps, each some 1e-5 from the closed
+        // form, as the spectrum ends at 31 bit rates.
+        CHECK(tail + wave[0] == Approx(neglected).margin(6e-4));
+        CHECK(worst == Approx(2 * step(1) - 1).margin(6e-4));
+    }
 }
 
 // Example networks of IEEE P370 as carried by the RF library scikit-rf (BSD-3-Clause); their

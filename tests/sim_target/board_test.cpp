@@ -12,18 +12,27 @@ namespace {
 // Up is the ordinal, down the first code, left the dwell's exponent, right the error ratio's.
 class PlainModel final : public LaneModel {
   public:
-    LatchedEdges latch(const std::vector<int>& codes, double error_ratio, std::uint64_t dwell_bits,
-                       std::uint64_t ordinal) const override {
+    void number(std::uint64_t ordinal, bool) override { ordinal_ = ordinal; }
+    bool put(const std::vector<int>& codes, bool) override {
+        first_code_ = codes[0];
+        return first_code_ != 31;
+    }
+    LatchedEdges latch(const LookTime& time, double error_ratio, std::uint64_t bits) override {
+        if (!time.has_lock) return {.closed = true};
         int exponent = 0;
-        while ((std::uint64_t{1} << exponent) < dwell_bits) ++exponent;
-        return {.up = static_cast<int>(ordinal),
-                .down = codes[0],
+        while ((std::uint64_t{1} << exponent) < bits) ++exponent;
+        return {.up = static_cast<int>(ordinal_),
+                .down = first_code_,
                 .left = exponent,
                 .right = static_cast<int>(error_ratio * 1e3 + 0.5),
-                .closed = false,
-                .locked = true};
+                .closed = false};
     }
-    bool locks(const std::vector<int>& codes) const override { return codes[0] != 31; }
+    CountedErrors count(const LookTime&, const MonitorPoint&, unsigned) override { return {}; }
+    MonitorPoint origin() const override { return {}; }
+
+  private:
+    std::uint64_t ordinal_ = 0;
+    int first_code_ = 0;
 };
 
 BoardSide small_side() {
@@ -100,7 +109,11 @@ std::vector<std::unique_ptr<LaneModel>> plain_models() {
 
 // At 1 Mb/s, a dwell of 2^20 bits takes 1.05 s.
 ChipOptions slow_chip() {
-    return {.time_scale = 1, .bit_rate_hz = 1e6, .reset_codes = {3, 1, 2, 1}};
+    return {.time_scale = 1,
+            .bit_rate_hz = 1e6,
+            .reset_codes = {3, 1, 2, 1},
+            .temperature_c = 25,
+            .chip = {}};
 }
 
 struct ChipBench {

@@ -28,7 +28,7 @@ TEST_CASE("the demo target reads as it is written") {
     CHECK(target.receiver.banks[bank_c1].kind == BankKind::capacitor);
     CHECK(target.receiver.banks[bank_c1].fixed == Approx(20e-15));
     CHECK(target.lanes[1].line.impedance_ohm == 47);
-    CHECK(target.lanes[1].line.loss_tangent == 0.008);  // shared by all lines
+    CHECK(target.lanes[1].line.loss_tangent == 0.0075); // shared by all lines
     CHECK(target.folder == LANEWRIGHT_SOURCE_DIR "/configs/targets");
     CHECK(complaints_of(demo_json()).empty());
 }
@@ -150,4 +150,33 @@ TEST_CASE("truth is written as one JSON object and as lines of values") {
     write_truth(csv, TruthFormat::csv, heading, std::vector<CodesScore>{result});
     CHECK_THAT(csv.str(), Catch::StartsWith("r1,c1,r2,c2,status,up_mv,"));
     CHECK_THAT(csv.str(), Contains("\n9,14,15,0,open,21.5,20.5,"));
+}
+
+TEST_CASE("what is broken on purpose must fit the lanes and banks there are") {
+    auto json = demo_json();
+    json["failures"] = {{"no_lock", {8}},
+                        {"swapped", {{0, 1}, {1, 2}}},
+                        {"foreign_writes",
+                         {{{"lane", 0}, {"dimension", "c2"}, {"code", 8}, {"at_batches", {1}}}}}};
+    json["lock"]["regained_below_ui"] = 0.8;
+    const std::string text = complaints_of(json);
+    CHECK_THAT(text, Contains("/failures/no_lock/0"));
+    CHECK_THAT(text, Contains("/failures/swapped/1"));
+    CHECK_THAT(text, Contains("/failures/foreign_writes/0/code"));
+    CHECK_THAT(text, Contains("/lock/regained_below_ui"));
+}
+
+TEST_CASE("what a target does not say of its monitor and lock is no effect") {
+    auto json = demo_json();
+    for (const char* key : {"lock", "write_effects", "telemetry"}) json.erase(key);
+    json["monitor"] = nlohmann::json::object();
+    const TargetFile target = target_of(json);
+    CHECK(target.monitor.height_step_mv == 2);
+    CHECK(target.monitor.against == ErrorsAgainst::pattern);
+    CHECK(target.monitor.event_share == 0);
+    CHECK(target.monitor.gain_tolerance == 0);
+    CHECK(std::isinf(target.chip.lock.lost_above_ui));
+    CHECK(target.chip.write_effects.settle_time_s == 0);
+    CHECK(target.chip.failures.clock == ReferenceClock::good);
+    CHECK(target.chip.failures.foreign_writes.empty());
 }

@@ -150,13 +150,16 @@ class Bench:
             raise AssertionError(f"stdout is no JSON object: {done.stdout!r}\n"
                                  f"{done.stderr}") from error
 
-    def readings(self, run="latest", store=None):
-        """The readings of a run as rows, without what differs between equal runs."""
+    def readings(self, run="latest", store=None, all_stages=False):
+        """The strategies' readings of a run as rows, without what differs between equal runs: a
+        reset costs one more look at the reference."""
         done = self.run("export", "--store", store or self.path("store.db"), run, "--as", "csv")
         assert done.returncode == 0, done.stderr
-        rows = list(csv.DictReader(io.StringIO(done.stdout)))
+        rows = [row for row in csv.DictReader(io.StringIO(done.stdout))
+                if all_stages or row["stage"] in ("search", "compare")]
         for row in rows:
             del row["run"], row["time"]
+            row.pop("lock_losses", None)  # the chip counts anew after a reset
         return sorted(rows, key=lambda row: (int(row["lane"]), int(row["ordinal"])))
 
     def codes_on_board(self, link):

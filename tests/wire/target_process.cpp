@@ -47,9 +47,11 @@ nlohmann::json demo_target() {
     return target;
 }
 
-BoardFile demo_board(const std::string& link, double deadline_ms) {
+namespace {
+
+BoardFile board_at(const char* file, const std::string& link, double deadline_ms) {
     Complaints complaints;
-    auto board = load_board_file((source_folder / "configs/boards/demo.json").string(), complaints);
+    auto board = load_board_file((source_folder / "configs/boards" / file).string(), complaints);
     if (!board) throw std::runtime_error(complaints.text());
     std::string why;
     const auto parsed = parse_link(link, SerialLinkDescription{}, why);
@@ -58,6 +60,16 @@ BoardFile demo_board(const std::string& link, double deadline_ms) {
     board->dialect.deadline_ms = deadline_ms;
     board->dialect.attempts = 6;
     return *board;
+}
+
+}  // namespace
+
+BoardFile demo_board(const std::string& link, double deadline_ms) {
+    return board_at("demo.json", link, deadline_ms);
+}
+
+BoardFile demo_counted_board(const std::string& link, double deadline_ms) {
+    return board_at("demo_counted.json", link, deadline_ms);
 }
 
 TargetProcess::TargetProcess(const nlohmann::json& target)

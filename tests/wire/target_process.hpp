@@ -29,6 +29,8 @@ class TemporaryFolder {
 nlohmann::json demo_target();
 // The demonstration board with this link, asked with a short deadline.
 BoardFile demo_board(const std::string& link, double deadline_ms = 100);
+// The same board with its monitor told where to look.
+BoardFile demo_counted_board(const std::string& link, double deadline_ms = 100);
 
 class TargetProcess {
   public:

@@ -2,7 +2,7 @@
 
 #include "drivers/board/check.hpp"
 #include "drivers/io/task_group.hpp"
-#include "sim_target/physics/truth.hpp"
+#include "sim_target/monitor/monitored_lane.hpp"
 #include "tests/wire/target_process.hpp"
 #include "tests/wire/wire_bench.hpp"
 
@@ -89,15 +89,19 @@ TEST_CASE("Readings are equal over TCP and serial for equal ordinals, and are th
     REQUIRE(target);
     int open = 0;
     for (std::uint16_t lane = 0; lane < lane_count; ++lane) {
-        const sim::Oracle oracle(*target, lane);
+        sim::MonitoredLane monitor(*target, lane);
         for (std::size_t i = 0; i < some_codes().size(); ++i) {
             CAPTURE(lane, i);
             CHECK(tcp[lane][i].wire == serial[lane][i].wire);
             const Reading& reading = tcp[lane][i].reading;
             CHECK(reading.codes == some_codes()[i]);
             const std::vector<std::int32_t> code = some_codes()[i].value;
-            const auto latched = sim::latched_reading(oracle, {code[0], code[2], code[1], code[3]},
-                                                      1e-6, 1u << 22, target->seed, lane, i + 1);
+            monitor.number(i + 1);
+            if (!monitor.put({code[0], code[2], code[1], code[3]}, true)) {
+                CHECK(reading.status == Status::no_lock);
+                continue;
+            }
+            const auto latched = monitor.latch(sim::LookTime{}, 1e-6, 1u << 22);
             CHECK((reading.status == Status::open || reading.status == Status::saturated) ==
                   !latched.closed);
             if (reading.status != Status::open) continue;
