@@ -98,7 +98,7 @@ void add_apply(CLI::App& app, ApplyOptions& options) {
 
 void add_replay(CLI::App& app, ReplayOptions& options) {
     CLI::App* verb =
-        app.add_subcommand("replay", "what a run's log gives: the same again, or another recipe");
+        app.add_subcommand("replay", "decide a run anew from its log, or by another recipe");
     verb->add_option("--store", options.store_path, store_help);
     verb->add_option("run", options.run, run_help)->required();
     verb->add_flag("--strict", options.strict,

@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <array>
 #include <cmath>
+#include <utility>
 
 #include "adapt/search/closed_scan.hpp"
 #include "adapt/search/score.hpp"
@@ -108,11 +109,12 @@ class MarginProbe : public Probe {
 };
 
 // The present codes, and where these show nothing, codes spread over the space, until one opens
-// the eye.
+// the eye. What was found before is tried first: it may not stand on the chip any more.
 class OpenCodes final : public MarginProbe {
   public:
     explicit OpenCodes(const ProbeInput& input) : MarginProbe(item::open_codes, input) {
         const CodeSpace& space = *problem_.space;
+        if (open_) candidates_.push_back(*std::exchange(open_, std::nullopt));
         if (space.allows(problem_.present)) candidates_.push_back(problem_.present);
         for (Codes& codes : closed_scan(space, problem_.present, most_codes_tried - 1)) {
             candidates_.push_back(std::move(codes));
@@ -467,7 +469,7 @@ std::unique_ptr<Probe> make_probe(const std::string& name, const ProbeInput& inp
 }
 
 double preflight_cost_at_most_s(double reading_s, std::size_t lanes) {
-    constexpr std::size_t monitor_readings = 4;   // of a latching monitor, looked at twice
+    constexpr std::size_t monitor_readings = 4;  // of a latching monitor, looked at twice
     constexpr std::size_t settle_rounds = 2;
     std::size_t readings = lanes * monitor_readings;
     double waits = return_count * return_wait_s;

@@ -24,16 +24,7 @@ std::string absolute(const std::string& path) {
 }
 
 Manifest manifest_of(const TuneRequest& request, const Identity& identity) {
-    Manifest manifest;
-    manifest.started_ns = utc_now_ns();
-    manifest.run = new_run_id(manifest.started_ns);
-    manifest.zone = local_zone_offset();
-    manifest.version = program_version();
-    manifest.git_hash = git_hash();
-    manifest.build = build_description();
-    manifest.cpu = cpu_description();
-    manifest.host = host_name();
-    manifest.pid = ::getpid();
+    Manifest manifest = manifest_begun_now();
     manifest.board_file = source_of(request.board.path, request.board.source);
     manifest.recipe_file = source_of(request.recipe.path, request.recipe.source);
     manifest.board = request.board.name;
@@ -150,6 +141,20 @@ Task<void> mend_note(Identity present, Bench bench, Store* store) {
 }
 
 }  // namespace
+
+Manifest manifest_begun_now() {
+    Manifest manifest;
+    manifest.started_ns = utc_now_ns();
+    manifest.run = new_run_id(manifest.started_ns);
+    manifest.zone = local_zone_offset();
+    manifest.version = program_version();
+    manifest.git_hash = git_hash();
+    manifest.build = build_description();
+    manifest.cpu = cpu_description();
+    manifest.host = host_name();
+    manifest.pid = ::getpid();
+    return manifest;
+}
 
 Task<void> mend_board(Identity present, Bench bench, Store* store, Endpoint* endpoint) {
     if (auto held = endpoint->hold_board(present); !held) co_return held.error();

@@ -14,6 +14,10 @@
 
 namespace lanewright {
 
+// A run's manifest with all that the moment, the machine and the program give: id, time, versions,
+// host and process.
+Manifest manifest_begun_now();
+
 struct TuneRequest {
     BoardFile board;
     Recipe recipe;

@@ -8,7 +8,7 @@
 #include <utility>
 
 #include "daemon/engine/lane_setup.hpp"
-#include "daemon/engine/version.hpp"
+#include "daemon/engine/tune.hpp"
 #include "daemon/replay/csv.hpp"
 #include "daemon/replay/row_reading.hpp"
 
@@ -207,16 +207,7 @@ Result<ImportedRows> import_rows(std::string_view text, const ColumnMap& columns
 
 Manifest manifest_of(const ImportedRun& run, const ColumnMap& columns, const BoardFile& board,
                      const SourceFile& board_file, Import from) {
-    Manifest manifest;
-    manifest.started_ns = utc_now_ns();
-    manifest.run = new_run_id(manifest.started_ns);
-    manifest.zone = local_zone_offset();
-    manifest.version = program_version();
-    manifest.git_hash = git_hash();
-    manifest.build = build_description();
-    manifest.cpu = cpu_description();
-    manifest.host = host_name();
-    manifest.pid = ::getpid();
+    Manifest manifest = manifest_begun_now();
     manifest.board_file = board_file;
     manifest.board = board.name;
     manifest.recipe = "imported";

@@ -71,10 +71,11 @@ TaskGroup::~TaskGroup() {
 void TaskGroup::spawn(std::string name, Task<void> task) {
     const std::uint64_t id = state_->next++;
     state_->running.emplace(id, std::move(name));
-    asio::co_spawn(state_->io, std::move(task),
-                   [state = state_, id](std::exception_ptr thrown, Result<void> result) {
-                       state->finished(id, thrown, result);
-                   });
+    asio::co_spawn(
+        state_->io, std::move(task),
+        [state = state_, id](const std::exception_ptr& thrown, const Result<void>& result) {
+            state->finished(id, thrown, result);
+        });
 }
 
 void TaskGroup::stop() {

@@ -31,7 +31,7 @@ asio::awaitable<void> Workers::run_there(std::function<void()> job) {
     auto& io = time.io();
     const auto call = std::make_shared<Call>(io);
     time.hold();
-    asio::post(pool_->threads_of_pool, [job = std::move(job), call, &io, &time]() mutable {
+    asio::post(pool_->threads_of_pool, [job = std::move(job), call = call, &io, &time]() mutable {
         job();
         job = nullptr;  // what the job owns is given up before anyone is told
         asio::post(io, [call = std::move(call), &time] {

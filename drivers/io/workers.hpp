@@ -8,9 +8,9 @@
 #include <exception>
 #include <functional>
 #include <memory>
-#include <optional>
 #include <type_traits>
 #include <utility>
+#include <variant>
 
 #include "drivers/io/time_source.hpp"
 
@@ -36,29 +36,29 @@ class Workers {
 template <class F>
 boost::asio::awaitable<std::invoke_result_t<F&>> compute_on(Workers* workers, F job) {
     using Value = std::invoke_result_t<F&>;
-    using Held = std::conditional_t<std::is_void_v<Value>, bool, Value>;
+    using Held = std::conditional_t<std::is_void_v<Value>, std::monostate, Value>;
     struct Call {
         explicit Call(F its_job) : job(std::move(its_job)) {}
         F job;
-        std::optional<Held> value;
-        std::exception_ptr error;
+        std::variant<std::exception_ptr, Held> outcome;
         void run() {
             try {
                 if constexpr (std::is_void_v<Value>) {
                     job();
+                    outcome.template emplace<1>();
                 } else {
-                    value.emplace(job());
+                    outcome.template emplace<1>(job());
                 }
             } catch (...) {
-                error = std::current_exception();
+                outcome.template emplace<0>(std::current_exception());
             }
         }
     };
     const auto call = std::make_shared<Call>(std::move(job));
     std::function<void()> there = [call] { call->run(); };
     co_await workers->run_there(std::move(there));
-    if (call->error) std::rethrow_exception(call->error);
-    if constexpr (!std::is_void_v<Value>) co_return std::move(*call->value);
+    if (const auto* error = std::get_if<0>(&call->outcome)) std::rethrow_exception(*error);
+    if constexpr (!std::is_void_v<Value>) co_return std::get<1>(std::move(call->outcome));
 }
 
 // Runs `job` on the pool and gives its value, or throws its exception, on the io thread. Virtual

@@ -2,6 +2,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numeric>
 #include <utility>
 
 namespace lanewright::sim {
@@ -44,7 +45,8 @@ void Chip::assign_groups(const Binding& binding) {
 }
 
 void Chip::assign_tags() {
-    for (std::uint16_t lane = 0; lane < lanes_.size(); ++lane) tags_.push_back(lane);
+    tags_.resize(lanes_.size());
+    std::iota(tags_.begin(), tags_.end(), std::uint16_t{0});
     for (const auto& [one, other] : options_.chip.failures.swapped) {
         std::swap(tags_.at(one), tags_.at(other));
     }
@@ -53,11 +55,11 @@ void Chip::assign_tags() {
 void Chip::reset() {
     registers_.reset();
     std::fill(busy_until_.begin(), busy_until_.end(), TimePoint{});
-    for (std::uint16_t lane = 0; lane < lanes_.size(); ++lane) {
+    for (std::size_t lane = 0; lane < lanes_.size(); ++lane) {
         const std::size_t group = lanes_[lane].group;
         lanes_[lane] = Lane{};
         lanes_[lane].group = group;
-        take_codes(lane);
+        fall_back(static_cast<std::uint16_t>(lane));
     }
 }
 
@@ -78,10 +80,10 @@ TimePoint Chip::next_change() const {
 
 // A result appears when its dwell is over, not before.
 void Chip::finish_due() {
-    for (std::uint16_t number = 0; number < lanes_.size(); ++number) {
+    for (std::size_t number = 0; number < lanes_.size(); ++number) {
         Lane& lane = lanes_[number];
         if (!lane.measuring || busy_until_[lane.group] > time_.now()) continue;
-        draw(number);
+        draw(static_cast<std::uint16_t>(number));
         if (lane.shows == Work::latch) lane.edges = lane.pending_edges;
         if (lane.shows == Work::count) lane.counted = lane.pending_counted;
         lane.measuring = false;
@@ -226,22 +228,37 @@ void Chip::written(std::uint16_t lane, Part part) {
     }
 }
 
-// New codes move the sampling phase, so that lock is lost for a while even where it comes back.
-void Chip::take_codes(std::uint16_t number) {
-    Lane& lane = lanes_[number];
-    std::vector<int> stored;
+std::vector<int> Chip::stored_codes(std::uint16_t lane) const {
+    std::vector<int> codes;
     for (const Part part : {Part::r1, Part::c1, Part::r2, Part::c2}) {
-        stored.push_back(static_cast<int>(registers_.stored(number, part).value_or(0)));
+        codes.push_back(static_cast<int>(registers_.stored(lane, part).value_or(0)));
     }
-    draw(number);  // what is under way looked at the codes before
+    return codes;
+}
+
+void Chip::take_codes(std::uint16_t lane) {
+    draw(lane);  // what is under way looked at the codes before
+    std::vector<int> codes = stored_codes(lane);
+    const bool locks = models_[lane]->put(codes, !loops_run(lane));
+    hold(lane, std::move(codes), locks);
+}
+
+void Chip::fall_back(std::uint16_t lane) {
+    std::vector<int> codes = stored_codes(lane);
+    const bool locks = models_[lane]->fall_back(codes);
+    hold(lane, std::move(codes), locks);
+}
+
+// New codes move the sampling phase, so that lock is lost for a while even where it comes back.
+void Chip::hold(std::uint16_t number, std::vector<int> codes, bool locks) {
+    Lane& lane = lanes_[number];
     lane.new_reading = true;
-    const bool had_lock = lane.locks;
-    lane.locks = models_[number]->put(stored, !loops_run(number));
-    if (had_lock && !lane.locks) ++lane.losses;
+    if (lane.locks && !locks) ++lane.losses;
+    lane.locks = locks;
     lane.strobed_at = time_.now();
     lane.paused_s = 0;
-    if (stored == lane.codes) return;
-    lane.codes = std::move(stored);
+    if (codes == lane.codes) return;
+    lane.codes = std::move(codes);
     lane.locked_from = after(lock_s_);
 }
 
@@ -291,7 +308,7 @@ void Chip::prepare(std::uint16_t number, Work work) {
 
 // Those whose monitors are at work at the same time disturb each other, where they do at all.
 void Chip::mark_parallel(std::uint16_t number) {
-    for (std::uint16_t other = 0; other < lanes_.size(); ++other) {
+    for (std::size_t other = 0; other < lanes_.size(); ++other) {
         if (other == number || !lanes_[other].measuring) continue;
         if (busy_until_[lanes_[other].group] <= time_.now()) continue;
         lanes_[other].look.in_parallel = lanes_[number].look.in_parallel = true;

@@ -77,7 +77,10 @@ class Chip final : private Hardware {
     std::uint32_t receiver_status(std::uint16_t lane, Part part) const;
     std::uint32_t board_status(Part part) const;
 
+    std::vector<int> stored_codes(std::uint16_t lane) const;
     void take_codes(std::uint16_t lane);
+    void fall_back(std::uint16_t lane);
+    void hold(std::uint16_t lane, std::vector<int> codes, bool locks);
     void start_measuring(std::uint16_t lane, Work work);
     void prepare(std::uint16_t lane, Work work);
     void draw(std::uint16_t lane);

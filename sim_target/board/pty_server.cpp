@@ -72,7 +72,7 @@ class PtyEnd final : public WireEnd {
           slave_(std::move(terminal.slave)),
           master_(hub.time.io(), terminal.master.release()) {
         error_code ignored;
-        master_.non_blocking(true, ignored);
+        static_cast<void>(master_.non_blocking(true, ignored));
     }
 
   private:
@@ -102,7 +102,7 @@ class PtyEnd final : public WireEnd {
 
     void shut() override {
         error_code ignored;
-        master_.close(ignored);
+        static_cast<void>(master_.close(ignored));
     }
 
     Descriptor slave_;

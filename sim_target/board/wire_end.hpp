@@ -19,7 +19,7 @@ namespace lanewright::sim {
 
 // What all wires share.
 struct Hub {
-    Hub(TimeSource& source, Board& its_board, const BoardSide& side, double scale, Stop stop)
+    Hub(TimeSource& source, Board& its_board, const BoardSide& side, double scale, const Stop& stop)
         : time(source),
           board(its_board),
           wire(side.wire),

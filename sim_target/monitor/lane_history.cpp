@@ -46,8 +46,9 @@ bool LaneHistory::lock_after(const Standing* before, const FourCodes& codes,
     return spread_ui <= (had ? lock_.lost_above_ui : lock_.regained_below_ui);
 }
 
+// As for every record: it follows the run's own readings, whatever was looked at beside them.
 bool LaneHistory::locks(const FourCodes& codes, double spread_ui) const {
-    return lock_after(current(), codes, spread_ui);
+    return lock_after(own_.current(), codes, spread_ui);
 }
 
 double LaneHistory::drawn(Purpose purpose, std::uint64_t ordinal, std::uint64_t which) const {
@@ -75,7 +76,7 @@ Standing LaneHistory::made(const Before& from, const Standing& named, double spr
     Standing now = named;
     now.changed = before == nullptr || before->codes != now.codes;
     now.entered = now.changed ? now.ordinal : before->entered;
-    now.locked = lock_after(before, now.codes, spread_ui);
+    now.locked = locks(now.codes, spread_ui);
     const double passed = before != nullptr ? before->charged_s : long_ago_s;
     now.time_s = before != nullptr ? before->time_s + passed : 0;
     const double drift_s = drift_time_s_, wander_s = lock_.wander_time_s;
@@ -134,7 +135,6 @@ const Standing& LaneHistory::begin(std::uint64_t ordinal, const FourCodes& codes
         from.left_out = chain.missed_lock && from.standing->ordinal + 1 != ordinal;
     }
     if (beside && &used == &own_ && own_.current() != nullptr) from = {own_.current(), false};
-    if (!beside && from.standing == nullptr) from = {beside_.current(), false};
     Standing named;
     named.ordinal = ordinal;
     named.codes = codes;

@@ -12,7 +12,8 @@
 // forgotten. The same number with other codes takes the place of its record.
 //
 // Readings beside a run's own (checks and references, numbered apart) follow whatever is current,
-// and nothing of the run's own follows from them: one more or less changes no other reading.
+// and nothing of the run's own follows from them, not even where they come first: one more or less
+// changes none of the run's own readings.
 
 #include <array>
 #include <cstdint>
@@ -47,7 +48,7 @@ class LaneHistory {
     LaneHistory(const LaneHistory&) = delete;  // it points into itself
     LaneHistory& operator=(const LaneHistory&) = delete;
 
-    // Whether lock holds when these codes follow what is current.
+    // Whether lock holds when these codes follow the run's own last reading.
     bool locks(const FourCodes& codes, double spread_ui) const;
     // Codes without lock were put, and no reading may have begun with them.
     void missed_lock() { own_.missed_lock = beside_.missed_lock = true; }

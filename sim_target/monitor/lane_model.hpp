@@ -42,6 +42,8 @@ class LaneModel {
     virtual void number(std::uint64_t ordinal, bool beside) = 0;
     // Codes, in the order r1, c1, r2, c2, take effect. True where the receiver has lock with them.
     virtual bool put(const std::vector<int>& codes, bool loops_held) = 0;
+    // The chip was reset to these codes: as put(), but no reading follows from it.
+    virtual bool fall_back(const std::vector<int>& codes) = 0;
     // error_ratio 0: the monitor's own.
     virtual LatchedEdges latch(const LookTime& time, double error_ratio, std::uint64_t bits) = 0;
     virtual CountedErrors count(const LookTime& time, const MonitorPoint& point,

@@ -94,28 +94,36 @@ MonitoredLane::Solved& MonitoredLane::solved(const std::vector<int>& codes) {
 void MonitoredLane::number(std::uint64_t ordinal, bool beside) {
     ordinal_ = ordinal;
     beside_ = beside;
-    announced_ = true;
     begun_ = false;
     history_.restart();
 }
 
-bool MonitoredLane::put(const std::vector<int>& codes, bool loops_held) {
+bool MonitoredLane::take(const std::vector<int>& codes, bool loops_held) {
     history_.restart();
     codes_ = codes;
     held_ = loops_held;
     begun_ = false;
-    if (announced_) return standing().locked;
-    const bool locked = history_.locks(four(codes), solved(codes).spread_ui);
+    return history_.locks(four(codes), solved(codes).spread_ui);
+}
+
+bool MonitoredLane::put(const std::vector<int>& codes, bool loops_held) {
+    const bool locked = take(codes, loops_held);
     if (!locked) history_.missed_lock();
     return locked;
 }
 
+// Else a reading taken again after a reset would not be the one that the reset made void.
+bool MonitoredLane::fall_back(const std::vector<int>& codes) {
+    return take(codes, false);
+}
+
+// A reading begins with its first look: numbers and codes are also written when a board is put back
+// as it was, and nothing follows from that.
 const Standing& MonitoredLane::standing() {
     if (!begun_) {
         history_.begin(ordinal_, four(codes_), solved(codes_).spread_ui, held_ && !loops_off_,
                        beside_);
         begun_ = true;
-        announced_ = false;
     }
     return *history_.current();
 }

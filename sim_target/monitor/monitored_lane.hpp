@@ -42,6 +42,7 @@ class MonitoredLane final : public LaneModel {
 
     void number(std::uint64_t ordinal, bool beside = false) override;
     bool put(const std::vector<int>& codes, bool loops_held) override;
+    bool fall_back(const std::vector<int>& codes) override;
     LatchedEdges latch(const LookTime& time, double error_ratio, std::uint64_t bits) override;
     CountedErrors count(const LookTime& time, const MonitorPoint& point,
                         unsigned bits_log2) override;
@@ -70,6 +71,7 @@ class MonitoredLane final : public LaneModel {
         std::uint64_t look = 0;  // which look of the reading it strikes
     };
 
+    bool take(const std::vector<int>& codes, bool loops_held);
     Solved& solved(const std::vector<int>& codes);
     const Standing& standing();
     Moment moment(const Standing& now, const LookTime& time) const;
@@ -98,8 +100,7 @@ class MonitoredLane final : public LaneModel {
     bool held_ = false;
     std::uint64_t ordinal_ = 0;
     bool beside_ = false;
-    bool announced_ = false;  // that number came after the last reading began
-    bool begun_ = false;      // a reading with this number and these codes
+    bool begun_ = false;  // a reading with this number and these codes
 };
 
 }  // namespace lanewright::sim

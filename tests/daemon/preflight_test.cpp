@@ -147,6 +147,33 @@ TEST_CASE("A lane without lock at its present codes is looked at again with code
     CHECK(start.state.item(item::open_codes, Lane{2})->result == ItemResult::passed);
 }
 
+TEST_CASE("A reset between open codes and the look at them has the codes written again") {
+    EngineBench bench;
+    int looks = 0;
+    bool put = false;  // codes, on lane 2 since the reset
+    const Start start = bench.start(with_preflight(), [&](FakeBoard& board) {
+        healthy(board);
+        board.status_of = [&](Lane lane, std::vector<StatusItem>& items) {
+            if (lane == Lane{2} && !put) items[1].found = 0;
+        };
+        board.before_operation = [&](const std::string& what, Lane lane) {
+            Fault fault;
+            if (lane != Lane{2}) return fault;
+            if (what == "read") put = true;
+            if (what != "status" || ++looks != 2) return fault;
+            board.reset();
+            put = false;
+            fault.cause = Cause::board_reset;
+            fault.what = "the board has reset";
+            return fault;
+        };
+    });
+    REQUIRE(start.outcome.has_value());
+    CHECK(start.outcome->ended.ending == Ending::complete);
+    CHECK(start.state.measured_item("lock")->result == ItemResult::passed);
+    CHECK(looks == 4);  // at the codes found, at the reset, behind it, at open codes again
+}
+
 TEST_CASE("A latching monitor whose eye is smaller at a higher error ratio stops the run") {
     EngineBench bench;
     const Start start = bench.start(with_preflight(), [](FakeBoard& board) {

@@ -107,7 +107,7 @@ TEST_CASE("Measured noise is said in text and JSON, with the run that measured i
     CHECK(noise_of(view, view.state.lanes.at(1)).height_sigma_mv == 1.25);
 }
 
-TEST_CASE("A reference that moved is a note and an entry; its reading is not the strategy's") {
+TEST_CASE("A reference that moved is a note and an entry, its reading not the strategy's") {
     std::vector<Event> events;
     read(events, 0, Stage::search, 40);
     read(events, 1, Stage::search, 41);

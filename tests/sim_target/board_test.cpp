@@ -17,6 +17,7 @@ class PlainModel final : public LaneModel {
         first_code_ = codes[0];
         return first_code_ != 31;
     }
+    bool fall_back(const std::vector<int>& codes) override { return put(codes, false); }
     LatchedEdges latch(const LookTime& time, double error_ratio, std::uint64_t bits) override {
         if (!time.has_lock) return {.closed = true};
         int exponent = 0;

@@ -209,9 +209,30 @@ TEST_CASE("a reading taken again is the same, whatever other lanes and readings 
             other.write("NOTE", 4, 4);
             other.look(4, 20, 0, 20);
             other.put(4, {28, 3, 2, 3});
+            other.write("NOTE", 0, 4);
             other.chip->reset();
         }
         CHECK(take(other, 4, i) == first[i]);
+    }
+}
+
+TEST_CASE("a reset to codes without lock changes no reading that follows it") {
+    nlohmann::json json = demo_json();
+    json["time_scale"] = 0;
+    DemoChip straight(json), fallen(json);
+    const auto take = [](DemoChip& from, std::uint32_t ordinal) {
+        from.put(4, open_codes);
+        from.write("NOTE", ordinal, 4);
+        std::vector<double> seen;
+        for (const int phase : {-18, -14, 14, 18}) seen.push_back(from.look(4, 0, phase, 20));
+        return seen;
+    };
+    CHECK(take(straight, 1) == take(fallen, 1));
+    fallen.write("NOTE", 3, 4);  // it strikes between the number and the first look
+    fallen.chip->reset();
+    CHECK(fallen.read("RX_STATUS", "lock", 4) == 0);
+    for (const std::uint32_t ordinal : {3u, 4u}) {
+        CHECK(take(straight, ordinal) == take(fallen, ordinal));
     }
 }
 

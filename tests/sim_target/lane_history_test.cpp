@@ -237,9 +237,13 @@ TEST_CASE("readings beside the run's own see it as it is and change nothing of i
     CHECK(seen[1][0] == own[4][0]);
     CHECK(seen[1][1] == Approx(own[3][1]).margin(5 * std::sqrt(2.0 / 400)));
     CHECK(reference(1) == seen[0]);
-    // Before the run's first reading, the run begins where they end.
+    // Nor does it matter how many there were before the run's first reading.
     NewHistory checked;
-    checked.begin(first_beside, a, narrow, true, true);
-    checked.charge(3);
-    CHECK(checked.begin(0, a, narrow, true).time_s == Approx(3.0));
+    for (std::uint64_t i = 0; i < 3; ++i) {
+        checked.begin(first_beside + i, i == 1 ? c : a, wide, true, true);
+        checked.charge(3);
+    }
+    for (std::uint64_t i = 0; i < 10; ++i) {
+        CHECK(taken(checked, i, i % 2 == 0 ? a : b) == own[i]);
+    }
 }

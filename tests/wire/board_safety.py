@@ -151,8 +151,11 @@ class BoardSafety(unittest.TestCase):
 
     def test_a_closed_eye_has_no_margin(self):
         """Distances and score of a closed latched eye are null: nothing of it was measured."""
-        target = self.target()
+        # On lane 7 these have lock and a closed eye; the demo's own have no lock there.
+        present = {"r1": 16, "r2": 6, "c1": 8, "c2": 1}
+        target = self.target(changes={"reset_codes": present})
         _, result, _ = self.bench.tune(target.link, "--lanes", "7", recipe=self.recipe)
+        self.assertEqual(result["lanes"][0]["former_codes"], present)
         before = result["lanes"][0]["before"]
         self.assertEqual(before["status"], "closed")
         for key in ("up_mv", "down_mv", "left_ui", "right_ui", "height_mv", "width_ui", "score"):

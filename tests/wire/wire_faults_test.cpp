@@ -70,15 +70,36 @@ Result<void> work(WireBench& bench, std::uint32_t count, Tally& tally, Wire& wir
     return bench.run(group.join());
 }
 
-Wire undisturbed(std::uint32_t count) {
+// A board whose readings say the same when they are taken again: the chip counts its losses of lock
+// on and on, and anew after a reset.
+BoardFile board_without_counters(const std::string& link, double deadline_ms) {
+    BoardFile board = demo_board(link, deadline_ms);
+    std::erase_if(board.telemetry, [](const TelemetryField& each) {
+        return each.field.text().starts_with("RX_LOSSES.");
+    });
+    return board;
+}
+
+Wire undisturbed(std::uint32_t count, BoardFile (*board)(const std::string&, double)) {
     TargetProcess process(demo_target());
-    WireBench bench(demo_board(process.tcp(), 400));
+    WireBench bench(board(process.tcp(), 400));
     REQUIRE(bench.open().has_value());
     Tally tally;
     Wire wire;
     REQUIRE(work(bench, count, tally, wire).has_value());
     CHECK(tally.voids == 0);
     return wire;
+}
+
+// The lanes and numbers whose records are not the same, for a person to read.
+std::string differences(const Wire& wire, const Wire& expected) {
+    std::string text = wire.size() == expected.size() ? "" : "another number of readings";
+    for (const auto& [place, operations] : wire) {
+        const auto found = expected.find(place);
+        if (found != expected.end() && found->second == operations) continue;
+        text += " lane " + std::to_string(place.first) + " number " + std::to_string(place.second);
+    }
+    return text;
 }
 
 Fault failure_to_open(const nlohmann::json& target, bool serial = false) {
@@ -127,14 +148,14 @@ class LockHolder {
 TEST_CASE("Two thousand transactions over a bad wire with resets accept no wrong value") {
     constexpr std::uint32_t count_of_lane = 125;
     const bool serial = GENERATE(false, true);
-    const Wire expected = undisturbed(count_of_lane);
+    const Wire expected = undisturbed(count_of_lane, board_without_counters);
     TargetProcess process(with_faults({{"seed", 7},
                                        {"flip", {{"probability", 0.01}}},
                                        {"cut", {{"probability", 0.01}}},
                                        {"twice", {{"probability", 0.01}}},
                                        {"late", {{"probability", 0.01}, {"by_ms", 120}}},
                                        {"reset", {{"at_batches", {301, 777}}}}}));
-    WireBench bench(demo_board(serial ? process.serial() : process.tcp(), 60), 100);
+    WireBench bench(board_without_counters(serial ? process.serial() : process.tcp(), 60), 100);
     const auto opened = bench.open();
     INFO((opened.has_error() ? opened.error().text() : std::string()));
     REQUIRE(opened.has_value());
@@ -150,7 +171,7 @@ TEST_CASE("Two thousand transactions over a bad wire with resets accept no wrong
     CHECK(tally.done == 2 * lane_count * count_of_lane);
     CHECK(tally.wrong == 0);
     CHECK(tally.voids >= 2);
-    CHECK(wire == expected);
+    CHECK_THAT(differences(wire, expected), Catch::Equals(""));
     const SessionStatistics seen = bench.board->statistics();
     CAPTURE(seen.frames, seen.bad_frames, seen.retries, seen.reconnects, seen.resets, tally.voids);
     CHECK(seen.resets == 2);
@@ -210,14 +231,14 @@ TEST_CASE("A cable that goes and comes back costs no wrong value") {
     TargetProcess process(with_faults({{"drop", {{"at_frame", 60}, {"back_after_ms", 300}}}}));
     WireBench bench(demo_board(serial ? process.serial() : process.tcp()));
     REQUIRE(bench.open().has_value());
-    const Wire expected = undisturbed(20);
+    const Wire expected = undisturbed(20, demo_board);
     Tally tally;
     Wire wire;
     const auto result = work(bench, 20, tally, wire);
     INFO((result.has_error() ? result.error().text() : std::string()));
     REQUIRE(result.has_value());
     CHECK(tally.wrong == 0);
-    CHECK(wire == expected);
+    CHECK_THAT(differences(wire, expected), Catch::Equals(""));
     CHECK(bench.board->statistics().reconnects >= 1);
     CHECK(bench.board->statistics().resets == 0);
 }
