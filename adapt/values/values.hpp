@@ -89,12 +89,13 @@ struct Request {
     Codes codes;
     Condition condition{};
     std::variant<MarginWanted, LooksWanted> what;
-    std::string why;  // for people and the log; takes no part in comparison of proposals
+    std::string why;    // for people and the log; takes no part in comparison of proposals
     double wait_s = 0;  // between the codes and the measurement, on top of what the board declares
 };
 
 // By how much each edge moves inwards for one more unit of the normal deviate Q of the error ratio
-// (error ratio = half of erfc(Q / root 2)), from counts at two error ratios. Bound at_least: not told.
+// (error ratio = half of erfc(Q / root 2)), from counts at two error ratios. Bound at_least: not
+// told.
 struct EdgeSlopes {
     Measured up_mv, down_mv, left_ui, right_ui;
     bool operator==(const EdgeSlopes&) const = default;
@@ -124,8 +125,8 @@ struct Reading {
     std::optional<EdgeSlopes> slopes;          // of a counting monitor
     std::vector<Count> counts;                 // raw, where the board has them
     std::vector<Telemetry> telemetry;
-    std::uint64_t bit_count = 0;               // bits dwelt on in all
-    double cost_s = 0;                         // declared cost, not measured time
+    std::uint64_t bit_count = 0;  // bits dwelt on in all
+    double cost_s = 0;            // declared cost, not measured time
 };
 
 // The margin a lane must have; a score of 1.0 just passes.

@@ -102,9 +102,9 @@ json field_json(const SavedField& field) {
 
 // Outside the lanes' budgets; less where the store knows what holds for the board.
 double preflight_s(const Preview& preview) {
-    return preview.lanes.empty() ? 0
-                                 : preflight_cost_at_most_s(preview.lanes.front().reading_s,
-                                                            preview.lanes.size());
+    return preview.lanes.empty()
+               ? 0
+               : preflight_cost_at_most_s(preview.lanes.front().reading_s, preview.lanes.size());
 }
 
 json preview_json(const Preview& preview, const TuneRequest& request) {

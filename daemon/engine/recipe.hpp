@@ -63,8 +63,8 @@ void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
                                 const std::vector<std::string_view>& strategy_names,
                                 Complaints& complaints);
 
-// Only what a log must be able to answer: dimensions and strategy. What a monitor could be told does
-// not matter where nothing is measured.
+// Only what a log must be able to answer: dimensions and strategy. What a monitor could be told
+// does not matter where nothing is measured.
 void check_recipe_for_replay(const Recipe& recipe, const BoardFile& board,
                              const std::vector<std::string_view>& strategy_names,
                              Complaints& complaints);

@@ -51,9 +51,9 @@ std::string number_or_dash(const std::optional<double>& value, const char* patte
 
 std::string score_text(const std::optional<Margin>& margin) {
     if (!margin) return "-";
+    if (margin->reading.status == Status::no_lock) return "no lock";
     if (margin->score.bound == Bound::at_most) return "closed";
-    if (!std::isfinite(margin->score.value))
-        return margin->reading.status == Status::no_lock ? "none" : "-";
+    if (!std::isfinite(margin->score.value)) return "-";
     return format("%.2f", margin->score.value);
 }
 

@@ -104,8 +104,8 @@ Options options_from(int count, char** words) {
 }
 
 Task<TuneOutcome> tune_mortally(BoardFile file, TuneRequest request, Store* store,
-                                Endpoint* endpoint, TimeSource* time, Workers* workers,
-                                Stop stop, Reaper* reaper) {
+                                Endpoint* endpoint, TimeSource* time, Workers* workers, Stop stop,
+                                Reaper* reaper) {
     auto link = std::make_unique<MortalLink>(make_link(*time, file.link), *reaper);
     auto board = co_await open_board(std::move(file), std::move(link), *time);
     if (!board) co_return board.error();

@@ -28,7 +28,7 @@ TEST_CASE("the demo target reads as it is written") {
     CHECK(target.receiver.banks[bank_c1].kind == BankKind::capacitor);
     CHECK(target.receiver.banks[bank_c1].fixed == Approx(20e-15));
     CHECK(target.lanes[1].line.impedance_ohm == 47);
-    CHECK(target.lanes[1].line.loss_tangent == 0.0075); // shared by all lines
+    CHECK(target.lanes[1].line.loss_tangent == 0.0075);  // shared by all lines
     CHECK(target.folder == LANEWRIGHT_SOURCE_DIR "/configs/targets");
     CHECK(complaints_of(demo_json()).empty());
 }
@@ -154,10 +154,10 @@ TEST_CASE("truth is written as one JSON object and as lines of values") {
 
 TEST_CASE("what is broken on purpose must fit the lanes and banks there are") {
     auto json = demo_json();
-    json["failures"] = {{"no_lock", {8}},
-                        {"swapped", {{0, 1}, {1, 2}}},
-                        {"foreign_writes",
-                         {{{"lane", 0}, {"dimension", "c2"}, {"code", 8}, {"at_batches", {1}}}}}};
+    json["failures"] = {
+        {"no_lock", {8}},
+        {"swapped", {{0, 1}, {1, 2}}},
+        {"foreign_writes", {{{"lane", 0}, {"dimension", "c2"}, {"code", 8}, {"at_batches", {1}}}}}};
     json["lock"]["regained_below_ui"] = 0.8;
     const std::string text = complaints_of(json);
     CHECK_THAT(text, Contains("/failures/no_lock/0"));
