@@ -98,10 +98,12 @@ void write_text(std::ostream& out, const TruthHeading& heading,
                 std::span<const CodesScore> results) {
     std::array<char, 400> line{};
     std::snprintf(line.data(), line.size(),
-                  "lane %d, %.1f dB at half the bit rate; required at %.3g: %.6g mV, %.6g UI\n",
+                  "SIMULATED TARGET: proves nothing about silicon\n"
+                  "lane %d, %.1f dB at half the bit rate\n"
+                  "required at error ratio %.3g: %.6g mV, %.6g UI\n",
                   heading.lane, heading.nyquist_loss_db, heading.required.error_ratio,
                   heading.required.height_mv, heading.required.width_ui);
-    out << heading.target << ", " << line.data();
+    out << heading.target << '\n' << line.data();
     for (const std::string_view name : dimension_names()) out << name << "  ";
     out << "    up_mv  down_mv  left_ui right_ui    score  centre errors\n";
     for (const CodesScore& result : results) {
@@ -156,6 +158,7 @@ std::optional<Required> required_from_text(const std::string& text, const Requir
     const auto settings = settings_of(text, problem);
     if (!settings) return std::nullopt;
     Required required = otherwise;
+    constexpr double least = 1e-18;
     const std::array<std::pair<const char*, std::pair<double*, double>>, 3> known = {{
         {"height_mv", {&required.height_mv, 1e5}},
         {"width_ui", {&required.width_ui, 1.0}},
@@ -167,9 +170,9 @@ std::optional<Required> required_from_text(const std::string& text, const Requir
             if (setting.key != name) continue;
             found = true;
             const std::optional<double> value = number_of<double>(setting.value);
-            if (!value || !(*value >= 1e-18 && *value <= target.second)) {
-                problem = setting.key + "=" + setting.value + ": a number above zero and at most " +
-                          Json(target.second).dump() + " is needed";
+            if (!value || !(*value >= least && *value <= target.second)) {
+                problem = setting.key + "=" + setting.value + ": a number from " +
+                          Json(least).dump() + " to " + Json(target.second).dump() + " is needed";
                 return std::nullopt;
             }
             *target.first = *value;
@@ -196,6 +199,7 @@ void write_truth(std::ostream& out, TruthFormat format, const TruthHeading& head
     for (const CodesScore& result : results) list.push_back(as_json(result));
     const Json whole{{"format", "lanewright-truth/1"},
                      {"target", heading.target},
+                     {"simulated", true},
                      {"lane", heading.lane},
                      {"question", heading.question},
                      {"nyquist_loss_db", heading.nyquist_loss_db},

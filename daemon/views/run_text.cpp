@@ -94,6 +94,18 @@ std::string fitted(const std::string& line) {
     return shown.size() <= 80 ? shown + "\n" : wrapped(shown, "  ");
 }
 
+// What the monitor's counts mean; of an imported run the board cannot tell.
+std::string definition_text(const RunView& view) {
+    if (view.manifest.imported) return {};
+    if (view.board.monitor.error_definition == "decision") {
+        return wrapped(
+            "errors counted against the receiver's own decision: counts at its decision point "
+            "prove nothing, and a closed eye has no centre error ratio",
+            "");
+    }
+    return "errors counted against the known pattern\n";
+}
+
 std::string head_of(const RunView& view) {
     const Manifest& manifest = view.manifest;
     std::string out = "run " + manifest.run + "  " + run_status(view) + "\n";
@@ -105,11 +117,12 @@ std::string head_of(const RunView& view) {
     const Required& required = view.recipe.required;
     if (manifest.purpose == Purpose::preflight) {
         out += "preflight alone: nothing is searched, all codes are put back\n";
-    } else {
+    } else if (!manifest.imported) {
         out += format("required %g mV x %g UI at error ratio %g", required.height_mv,
                       required.width_ui, required.error_ratio) +
                "\n";
     }
+    out += definition_text(view);
     if (manifest.identity.simulated) {
         out += "SIMULATED BOARD: these results prove nothing about silicon\n";
     }
@@ -383,15 +396,15 @@ std::string run_table(const RunView& view, bool colour) {
     };
     std::string out =
         format("%4s  %-9s %-9s", "lane", "verdict", "outcome") + codes_cell(codes_head) +
-        format(" %6s %6s %6s %6s %-10s %2s\n", "height", "width", "score", "score", "95 %", "n");
+        format(" %6s %5s %7s %6s %-10s %2s\n", "height", "width", "score", "score", "95 %", "n");
     out += format("%4s  %-9s %-9s", "", "", "") + codes_cell("") +
-           format(" %6s %6s %6s %6s %-10s\n", "mV", "UI", "before", "after", "limits");
+           format(" %6s %5s %7s %6s limits\n", "mV", "UI", "before", "after");
     for (const LaneResult& lane : lane_results(view)) {
         out +=
             format("%4u  ", static_cast<unsigned>(lane.lane)) + verdict_cell(lane, colour) +
             format(" %-9s", lane.outcome ? name_of(*lane.outcome) : "-") +
             codes_cell(lane.decided ? codes_text(view.space, *lane.decided, '/') : "-") +
-            format(" %6s %6s %6s %6s %-10s %2zu\n",
+            format(" %6s %5s %7s %6s %-10s %2zu\n",
                    number_or_dash(opening_of(lane.after, true), "%.1f").c_str(),
                    number_or_dash(opening_of(lane.after, false), "%.3f").c_str(),
                    score_text(lane.before).c_str(), score_text(lane.after).c_str(),

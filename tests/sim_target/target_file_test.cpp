@@ -142,6 +142,7 @@ TEST_CASE("truth is written as one JSON object and as lines of values") {
     write_truth(out, TruthFormat::json, heading, std::vector<CodesScore>{result});
     const auto json = nlohmann::json::parse(out.str());
     CHECK(json["lane"] == 3);
+    CHECK(json["simulated"] == true);
     CHECK(json["required"]["height_mv"] == 40);
     CHECK(json["results"][0]["codes"]["c1"] == 14);
     CHECK(json["results"][0]["height_mv"] == 42);
