@@ -109,4 +109,11 @@ Codes nearest_allowed(const CodeSpace& space, const Codes& codes) {
     return best;
 }
 
+std::string scan_note(const std::string& closed, std::ptrdiff_t count) {
+    if (count <= 0) return closed + ", and the search ended before other codes were tried";
+    return closed + ": " + std::to_string(count) + (count == 1 ? " code" : " codes") +
+           " spread over the space " + (count == 1 ? "was" : "were") +
+           " read to find one that opens it";
+}
+
 }  // namespace lanewright

@@ -6,6 +6,7 @@
 // Threads:   any.
 
 #include <cstddef>
+#include <string>
 #include <vector>
 
 #include "adapt/search/code_space.hpp"
@@ -19,6 +20,9 @@ namespace lanewright {
 // that rises with frequency, and only peaking opens it. A space of few codes is listed whole, in
 // that order.
 std::vector<Codes> closed_scan(const CodeSpace& space, const Codes& present, std::size_t count);
+
+// A sentence on a scan, of which `count` codes were read; `closed` says where the eye was closed.
+std::string scan_note(const std::string& closed, std::ptrdiff_t count);
 
 // The allowed codes closest to these (sum of the distances in shares of each range), which may be
 // outside the ranges or forbidden; empty codes where nothing allowed is found among 2^22 codes.

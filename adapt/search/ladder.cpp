@@ -120,9 +120,7 @@ class Ladder : public StagedSearch {
             return ledger().was_read(codes);
         });
         if (scanned()) {
-            notes.push_back(
-                "the eye was closed at the start and on every rung: " + std::to_string(count) +
-                " codes spread over the space were read to find one that opens it");
+            notes.push_back(scan_note("the eye was closed at the start and on every rung", count));
         }
         if (!without_tables_) return notes;
         notes.push_back(

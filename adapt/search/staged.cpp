@@ -151,8 +151,7 @@ std::vector<std::string> StagedSearch::notes(const Codes& decided) const {
         const auto end = scan_order_.begin() + static_cast<std::ptrdiff_t>(scanned.looked_at);
         const auto count = std::count_if(
             scan_order_.begin(), end, [&](const Codes& codes) { return ledger_.was_read(codes); });
-        notes.push_back("the eye was closed at the start: " + std::to_string(count) +
-                        " codes spread over the space were read to find one that opens it");
+        notes.push_back(scan_note("the eye was closed at the start", count));
     }
     if (ledger_.asked_differently() > 0) {
         notes.push_back(std::to_string(ledger_.asked_differently()) +

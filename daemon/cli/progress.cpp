@@ -60,7 +60,8 @@ void Progress::take(const StoredEvent& stored) {
     } else if (const auto* decided = std::get_if<LaneDecided>(&stored.event)) {
         line.phase = "decided";
         say(number(*lane), "decided after " + std::to_string(line.reading_count) +
-                               " readings: " + decided->decision.reason);
+                               (line.reading_count == 1 ? " reading: " : " readings: ") +
+                               decided->decision.reason);
     } else if (const auto* finished = std::get_if<LaneFinished>(&stored.event)) {
         line.phase = name_of(finished->outcome);
         line.done = true;

@@ -154,10 +154,18 @@ std::optional<EdgeShift> significant_shift(const Reading& before, const Reading&
     };
     if (!seen(before)) return std::nullopt;
     EdgeShift worst;
-    worst.gone = !seen(now);
+    const bool closed = !seen(now);
+    // Noise alone takes a counted eye that is hardly open across the boundary. Its vertical edges
+    // go on below zero there, so they say by how much; its horizontal ones change their meaning.
+    const auto goes_on = [&](const Edge& edge) {
+        return now.status == Status::closed && !latched && edge.vertical && !edge.opening &&
+               plain(before, edge) && plain(now, edge);
+    };
+    worst.gone = closed && std::none_of(edges.begin(), edges.end(), goes_on);
     if (worst.gone) return worst;
     std::size_t compared = 0;
     for (const Edge& edge : edges) {
+        if (closed && !goes_on(edge)) continue;
         if (!plain(before, edge) || !plain(now, edge)) continue;
         ++compared;
         const double step =

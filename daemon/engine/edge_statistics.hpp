@@ -67,7 +67,8 @@ struct EdgeShift {
 
 // Set where the shift is significant at 95 %, all edges taken together (Bonferroni). `noise` is one
 // edge's repeatability; of latching monitors the step comes on top, of counting ones the reading's
-// own standard error is taken where it is larger.
+// own standard error is taken where it is larger. A counted eye that was open and is closed is
+// compared by its vertical edges, which are signed; any other is gone.
 std::optional<EdgeShift> significant_shift(const Reading& before, const Reading& now,
                                            const MonitorNoise& noise, bool latched);
 

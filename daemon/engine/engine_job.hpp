@@ -62,6 +62,7 @@ class Engine {
     Task<std::vector<StatusItem>> read_status(Lane lane);
     Task<std::vector<StatusItem>> status_at_open_codes(Lane lane);
     Task<void> check_monitors();
+    Task<void> check_monitors_at_open_codes();
     Task<void> measure_board();
     Task<bool> take_known();
     Task<std::optional<Lane>> lane_with_open_codes(std::vector<Lane> candidates);

@@ -150,6 +150,21 @@ Task<void> Engine::check_monitors() {
     co_return co_await run_items(std::move(lanes), std::move(items));
 }
 
+// A closed eye shows nothing of its monitor: once more where codes that open it were found since.
+Task<void> Engine::check_monitors_at_open_codes() {
+    std::vector<Lane> lanes;
+    for (const Lane lane : active_lanes()) {
+        const PreflightItem* known = state_.item(item::monitor, lane);
+        const PreflightItem* open = state_.item(item::open_codes, lane);
+        if (known == nullptr || known->result != ItemResult::not_shown) continue;
+        if (open == nullptr || open->result != ItemResult::passed) continue;
+        if (known->codes != open->codes) lanes.push_back(lane);
+    }
+    if (lanes.empty()) co_return Result<void>{};
+    std::vector<std::string> items{item::monitor};
+    co_return co_await run_items(std::move(lanes), std::move(items));
+}
+
 // True where earlier runs, or an earlier start of this one, have measured all of it.
 Task<bool> Engine::take_known() {
     std::vector<Event> events;
@@ -291,8 +306,9 @@ Task<void> Engine::preflight() {
     auto resumed = co_await resume_items();
     if (!resumed) co_return resumed.error();
     using PreflightPart = Task<void> (Engine::*)();
-    for (const PreflightPart part : {&Engine::check_status, &Engine::check_monitors,
-                                     &Engine::measure_board, &Engine::choose_noise}) {
+    for (const PreflightPart part :
+         {&Engine::check_status, &Engine::check_monitors, &Engine::measure_board,
+          &Engine::check_monitors_at_open_codes, &Engine::choose_noise}) {
         if (should_stop()) co_return Result<void>{};
         auto done = co_await (this->*part)();
         if (!done) co_return done.error();

@@ -119,9 +119,9 @@ std::vector<PreflightItem> status_items(const BoardFile& board,
             ++looked_at;
             if (found->right() || (!per_lane && !item.found.empty())) continue;
             item.found +=
-                (item.found.empty() ? "" : ", ") +
-                (per_lane ? "lane " + std::to_string(number(lane.lane)) + ": " : std::string()) +
-                std::to_string(found->found);
+                (item.found.empty() ? "" : ", ") + expected.field.text() + " is " +
+                std::to_string(found->found) +
+                (per_lane ? " on lane " + std::to_string(number(lane.lane)) : std::string());
         }
         if (looked_at == 0) {
             item.found = "not looked at: no lane is left to run";
@@ -156,7 +156,7 @@ PreflightItem parallel_item(const PairReadings& one, const PairReadings& other, 
     item.result = ItemResult::passed;
     const std::string lanes =
         "lanes " + std::to_string(number(one.lane)) + " and " + std::to_string(number(other.lane));
-    item.found = lanes + " do, within " +
+    item.found = lanes + " read the same alone and together, to within " +
                  fixed(std::max(first.standard_errors, second.standard_errors), 1) +
                  " standard errors";
     const auto differs = [limit](const Difference& d) {
@@ -164,7 +164,7 @@ PreflightItem parallel_item(const PairReadings& one, const PairReadings& other, 
     };
     if (!differs(first) && !differs(second)) return item;
     item.result = ItemResult::noted;
-    item.found = lanes + " do not: ";
+    item.found = lanes + " read otherwise together than alone: ";
     if (differs(first)) item.found += text_of(first, one.lane);
     if (differs(second)) {
         item.found += (differs(first) ? ", " : "") + text_of(second, other.lane);
@@ -173,12 +173,26 @@ PreflightItem parallel_item(const PairReadings& one, const PairReadings& other, 
     return item;
 }
 
+namespace {
+
+// What a latch hides inside its step never shows as a spread; and where no spread shows at all,
+// that does not tell that there is no noise: then what the board file declares stands.
+double told_sigma(double measured, double step, double declared) {
+    const double hidden = step / std::sqrt(12.0);
+    return std::max(measured > 0 ? measured : declared, hidden);
+}
+
+}  // namespace
+
 std::optional<MonitorNoise> measured_noise(const RunState& state, const MonitorNoise& declared) {
     const PreflightItem* repeats = state.measured_item(item::repeatability);
     if (repeats == nullptr || repeats->result == ItemResult::failed) return std::nullopt;
+    const double height = value_of(*repeats, "height_sigma_mv");
+    const double width = value_of(*repeats, "width_sigma_ui");
+    if (height <= 0 && width <= 0) return std::nullopt;
     MonitorNoise noise = declared;
-    noise.height_sigma_mv = value_of(*repeats, "height_sigma_mv");
-    noise.width_sigma_ui = value_of(*repeats, "width_sigma_ui");
+    noise.height_sigma_mv = told_sigma(height, declared.height_step_mv, declared.height_sigma_mv);
+    noise.width_sigma_ui = told_sigma(width, declared.width_step_ui, declared.width_sigma_ui);
     const PreflightItem* returns = state.measured_item(item::return_error);
     if (returns != nullptr && returns->result == ItemResult::passed) {
         noise.height_sigma_mv =

@@ -85,7 +85,7 @@ class CountedSanity final : public MonitorProbe {
         PreflightItem out = blank();
         out.expected = "half errors far outside, the bits asked for, errors that rise outwards";
         if (counts_.empty()) {
-            out.found = "not shown: without lock the monitor counts nothing";
+            out.found = "without lock the monitor counts nothing";
             return out;
         }
         out.values["far_error_ratio"] = ratio_of(counts_.front());
@@ -195,12 +195,12 @@ class LatchedSanity final : public MonitorProbe {
         PreflightItem out = blank();
         out.expected = "an eye that is not smaller at a higher error ratio";
         if (rounds_ == 0) {
-            out.found = "not shown: the search's error ratio is the highest of this monitor";
+            out.found = "the search's error ratio is the highest of this monitor";
             return out;
         }
         const bool open = strict_.status == Status::open || strict_.status == Status::saturated;
         if (wrong_.empty() && !open) {
-            out.found = "not shown: the eye is closed";
+            out.found = "the eye is closed, no edges to compare";
             return out;
         }
         out.result = wrong_.empty() ? ItemResult::passed : ItemResult::failed;

@@ -181,7 +181,8 @@ class Repeats final : public MarginProbe {
         out.values["height_sigma_mv"] = height.value;
         out.values["width_sigma_ui"] = width.value;
         out.found = "sigma of one edge " + plus_minus(height.value, width.value) + ", " +
-                    std::to_string(kept.readings.size()) + " readings";
+                    std::to_string(kept.readings.size()) + " readings" +
+                    without_spread(height.value > 0, width.value > 0);
         if (kept.left_out > 0) {
             out.found += ", " + std::to_string(kept.left_out) + " that stood apart left out";
         }
@@ -201,6 +202,14 @@ class Repeats final : public MarginProbe {
     }
 
   private:
+    // No spread at all is no proof of no noise: a monitor may repeat an old answer.
+    static std::string without_spread(bool height, bool width) {
+        if (height && width) return {};
+        const std::string which =
+            height ? "horizontal edges of " : (width ? "vertical edges of " : "");
+        return ", " + which +
+               "all readings the same: cannot tell, what the board file declares is kept";
+    }
     PreflightItem not_steady(PreflightItem out) const {
         const auto open = std::count_if(readings_.begin(), readings_.end(),
                                         [](const auto& r) { return r.status == Status::open; });

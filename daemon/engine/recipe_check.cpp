@@ -2,10 +2,13 @@
 #include <algorithm>
 #include <charconv>
 #include <cmath>
+#include <optional>
 #include <utility>
 
+#include "adapt/margin/edge_search.hpp"
 #include "daemon/engine/lane_setup.hpp"
 #include "daemon/engine/recipe.hpp"
+#include "drivers/board/counted_look.hpp"
 
 namespace lanewright {
 
@@ -62,10 +65,50 @@ class Check {
     void error_ratios() {
         ratio_in_reach("/required/error_ratio", recipe_.required.error_ratio);
         ratio_in_reach("/search_error_ratio", recipe_.search_error_ratio);
-        shown_by_one_look("/search_error_ratio", recipe_.search_error_ratio);
+        reached_with_this_dwell("/search_error_ratio", recipe_.search_error_ratio);
         if (recipe_.required.error_ratio != recipe_.search_error_ratio) {
-            shown_by_one_look("/required/error_ratio", recipe_.required.error_ratio);
+            reached_with_this_dwell("/required/error_ratio", recipe_.required.error_ratio);
         }
+    }
+
+    void reached_with_this_dwell(const std::string& pointer, double ratio) {
+        if (counts(board_)) return counted_with_this_dwell(pointer, ratio);
+        shown_by_one_look(pointer, ratio);
+    }
+
+    // A counting monitor carries its edges to a ratio that it cannot count, which proves nothing
+    // unless the recipe accepts it as proof.
+    void counted_with_this_dwell(const std::string& pointer, double ratio) {
+        if (recipe_.accept_extrapolated) return;
+        const LookGrid grid = LookScale(board_).grid();
+        const auto bits = static_cast<std::uint64_t>(bits_);
+        const double stated = counted_ratio({ratio, bits}, grid);
+        if (stated <= ratio) return;
+        const bool proof = ratio == recipe_.required.error_ratio;
+        std::string hint = "\"accept_extrapolated\": true";
+        if (const auto enough = countable_ratio(grid)) {
+            hint += ", or an error ratio of " + short_number(*enough);
+        }
+        if (const auto longer_s = countable_dwell_s(ratio, grid)) {
+            hint += ", or a dwell_s of " + short_number(*longer_s);
+        }
+        complain(pointer,
+                 short_number(ratio) + ", for which a reading of " + short_number(recipe_.dwell_s) +
+                     " s counts too few errors: its edges are those at " + short_number(stated) +
+                     ", and only extrapolated from there" +
+                     (proof ? ", so that no verdict \"meets\" can come of it" : ""),
+                 "an error ratio that is counted with this dwell", hint + " would do");
+    }
+
+    // Nothing could be read at all.
+    void budget() {
+        Request reading;
+        reading.what = MarginWanted{recipe_.search_error_ratio, static_cast<std::uint64_t>(bits_)};
+        const CostModel cost = cost_model_of(board_);
+        budget_for("/budget/standard_readings", recipe_.budget.standard_readings,
+                   standard_readings(cost, reading), "standard readings");
+        budget_for("/budget/bench_s", recipe_.budget.bench_s, cost_s(cost, reading),
+                   "s of bench time");
     }
 
     void shown_by_one_look(const std::string& pointer, double ratio) {
@@ -112,6 +155,49 @@ class Check {
     }
 
   private:
+    void budget_for(const std::string& pointer, double budget, double each,
+                    const std::string& unit) {
+        if (budget <= 0 || each <= budget) return;
+        complain(pointer, short_number(budget),
+                 "at least " + short_number(rounded_up(each)) + " " + unit +
+                     ", the cost of one reading with a dwell_s of " + short_number(recipe_.dwell_s),
+                 "a search needs many readings: a larger budget, or a shorter dwell_s");
+    }
+
+    // The lowest ratio, to three digits, that is counted with the recipe's dwell.
+    std::optional<double> countable_ratio(const LookGrid& grid) const {
+        const auto bits = static_cast<std::uint64_t>(bits_);
+        const auto counted = [&](double log) {
+            const double ratio = std::pow(10.0, log);
+            return counted_ratio({ratio, bits}, grid) <= ratio;
+        };
+        const auto log = lowest_that(counted, -18, -2);
+        if (!log) return std::nullopt;
+        return rounded_up(std::pow(10.0, *log));
+    }
+    // The shortest dwell, to three digits, with which the ratio is counted.
+    std::optional<double> countable_dwell_s(double ratio, const LookGrid& grid) const {
+        Recipe longer;
+        const auto counted = [&](double log) {
+            longer.dwell_s = std::pow(10.0, log);
+            return counted_ratio({ratio, dwell_bits_of(board_, longer)}, grid) <= ratio;
+        };
+        const auto log =
+            lowest_that(counted, std::log10(recipe_.dwell_s), std::log10(longest_dwell_s));
+        if (!log) return std::nullopt;
+        return std::min(rounded_up(std::pow(10.0, *log)), longest_dwell_s);
+    }
+    // By halving: `holds` is false up to some place and true from there on.
+    template <typename Holds>
+    static std::optional<double> lowest_that(const Holds& holds, double from, double to) {
+        if (!holds(to)) return std::nullopt;
+        for (int i = 0; i < 60; ++i) {
+            const double middle = (from + to) / 2;
+            (holds(middle) ? to : from) = middle;
+        }
+        return to;
+    }
+
     // A dwell of at least so many bits, in the steps in which the monitor takes it.
     double seconds_for(double bits) const {
         const auto& steps = board_.monitor.sequence;
@@ -216,6 +302,7 @@ void check_recipe_against_board(const Recipe& recipe, const BoardFile& board,
     check.dimensions();
     check.strategy(strategy_names);
     check.error_ratios();
+    check.budget();
     check.monitor_range();
     check.parameters();
 }

@@ -114,6 +114,16 @@ Answers decide(const ReplayProblem& problem, const ReadingLog& log, ReplayedLane
         }
         lane.handed_out = answers.handed_out();
         lane.again = answers.again();
+        const std::size_t missing = lane.never_read.size();
+        if (lane.decision && wants_data(answers.code_count(), missing)) {
+            lane.decision.reset();
+            lane.cause = std::to_string(missing) + " of " +
+                         std::to_string(missing + answers.code_count()) +
+                         " codes asked for were never read" +
+                         (lane.rest_left_out ? ", and more were left unasked" : "") +
+                         ". The log is too thin for this recipe: replay it with one nearer to the "
+                         "run's own, or read more codes";
+        }
         return answers;
     }
 }
@@ -126,12 +136,23 @@ std::optional<Noisy> noisy(const Score& score) {
     return Noisy{score.value, score.std_error};
 }
 
+// The error ratio at which the score of such a mean holds: where it was read, or the required one
+// where its edges are carried there.
+double ratio_of_score(const Reading& mean, const Score& score, const Required& required) {
+    const bool is_carried = score.basis == Basis::extrapolated && mean.slopes &&
+                            mean.status != Status::no_lock &&
+                            required.error_ratio < mean.error_ratio;
+    return is_carried ? required.error_ratio : mean.error_ratio;
+}
+
 SelectedMargin selected_margin(const ReplayProblem& problem, const Answers& answers,
                                const LogScores& scores, const Codes& codes) {
     const LaneProblem& lane = problem.setup.problem;
     SelectedMargin out;
     const std::vector<Reading> chosen_by = answers.readings(codes, problem.told_ratio, true);
-    out.raw = score_of(mean_of(chosen_by, lane.noise), lane.required);
+    out.mean = mean_of(chosen_by, lane.noise);
+    out.raw = score_of(out.mean, lane.required);
+    out.error_ratio = ratio_of_score(out.mean, out.raw, lane.required);
     const std::optional<Noisy> own = noisy(out.raw);
     if (!own) {
         out.why_not = "the score is a bound, not a value";
@@ -155,16 +176,29 @@ SelectedMargin selected_margin(const ReplayProblem& problem, const Answers& answ
 
 void judge_afresh(const ReplayProblem& problem, const Answers& answers, const Codes& codes,
                   ReplayedLane& lane) {
-    const std::vector<Reading> fresh = answers.readings(codes, problem.told_required, false);
+    std::vector<Reading> fresh = answers.readings(codes, problem.told_required, false);
+    if (fresh.empty() && problem.accept_extrapolated) {
+        fresh = answers.readings(codes, problem.told_ratio, false);
+        const bool carries = std::all_of(fresh.begin(), fresh.end(), [](const Reading& reading) {
+            return reading.slopes.has_value();
+        });
+        if (!carries) fresh.clear();
+    }
     lane.fresh_count = fresh.size();
     const bool known = std::all_of(fresh.begin(), fresh.end(),
                                    [](const Reading& reading) { return reading.error_ratio > 0; });
     if (fresh.empty() || !known) return;
     const LaneProblem& of = problem.setup.problem;
     lane.fresh = judge(fresh, of.required, of.noise, problem.accept_extrapolated);
+    lane.fresh_mean = mean_of(fresh, of.noise);
+    lane.fresh_error_ratio = ratio_of_score(lane.fresh_mean, lane.fresh->score, of.required);
 }
 
 }  // namespace
+
+bool wants_data(std::size_t read, std::size_t missing) {
+    return missing > read && (read <= 2 || 9 * read < missing);
+}
 
 ReplayProblem replay_problem_of(const BoardFile& board, const Recipe& recipe, Lane lane,
                                 std::uint64_t seed, Codes present) {
@@ -216,6 +250,9 @@ ReplayedLane replay_lane(const ReplayProblem& problem, const ReadingLog& log,
     const Answers answers = decide(problem, log, lane);
     if (!lane.decision) return lane;
     const Codes& codes = lane.decision->codes;
+    lane.read_at = problem.told_ratio;
+    const std::vector<double> ratios = log.error_ratios();
+    if (!ratios.empty() && ratios.back() == 0) lane.read_at = 0;  // nobody knows any of them
     if (!answers.readings(codes, problem.told_ratio, true).empty()) {
         lane.selected = selected_margin(problem, answers, scores, codes);
     }

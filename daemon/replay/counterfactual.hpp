@@ -26,9 +26,15 @@ namespace lanewright {
 
 constexpr std::size_t most_starts = 64;
 
+// Whether a strategy that asked for `missing` codes in vain, and for `read` codes with an answer,
+// decided by want of data: two codes or fewer, or less than a tenth of all, were there.
+bool wants_data(std::size_t read, std::size_t missing);
+
 // The decided codes were chosen as the best of many noisy ones, so their own readings flatter them.
 struct SelectedMargin {
     Score raw;                    // of the readings that the strategy saw of them, each once
+    Reading mean;                 // of these readings
+    double error_ratio = 0;       // at which the scores hold; 0: not known
     std::optional<double> score;  // shrunk for the luck of the best; empty: cannot be told
     double std_error = 0;
     std::size_t compared_with = 0;  // codes of the log whose scores the shrinking rests on
@@ -49,8 +55,12 @@ struct ReplayedLane {
     // on the log what it would have done on the board.
     std::optional<std::size_t> same_until;
     std::optional<SelectedMargin> selected;
-    // From readings of the decided codes, at the required error ratio, that did not choose them.
+    double read_at = 0;  // the error ratio of the readings; 0: not known
+    // From readings of the decided codes that did not choose them, at the required error ratio or,
+    // only where the recipe accepts it, carried there.
     std::optional<Judgement> fresh;
+    Reading fresh_mean;
+    double fresh_error_ratio = 0;  // at which that score holds
     std::size_t fresh_count = 0;
 };
 

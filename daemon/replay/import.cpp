@@ -3,6 +3,7 @@
 #include <unistd.h>
 
 #include <algorithm>
+#include <cctype>
 #include <set>
 #include <tuple>
 #include <utility>
@@ -54,8 +55,46 @@ struct Group {
 };
 using Key = std::tuple<std::string, std::map<std::string, std::string>, bool>;
 
-void read_rows(CsvReader& csv, const CsvHeader& header, std::size_t width, const RowReader& reader,
-               std::map<Key, Group>& groups, ImportedRows& out) {
+std::string lower_case(std::string_view text) {
+    std::string out(text);
+    std::transform(out.begin(), out.end(), out.begin(),
+                   [](unsigned char c) { return static_cast<char>(std::tolower(c)); });
+    return out;
+}
+
+// A simulated margin must never pass for a measured one, nor the other way round: where the map
+// states it for all rows, the file's own column of that name must not say otherwise.
+class SimulatedCheck {
+  public:
+    SimulatedCheck(const ColumnMap& columns, const CsvHeader& header) : columns_(columns) {
+        if (columns.simulated.kind != Stated::Kind::value) return;
+        for (const auto& [name, place] : header) {
+            if (lower_case(name) == "simulated") column_ = name;
+        }
+    }
+
+    Result<void> check(const Cells& cells, std::size_t line) const {
+        if (column_.empty()) return {};
+        const std::string word = lower_case(cells.text(column_));
+        const bool yes = word == "true" || word == "1" || word == "yes";
+        const bool no = word == "false" || word == "0" || word == "no";
+        const std::string& stated = columns_.simulated.text;
+        if (stated == "true" ? !no : !yes) return {};
+        return bad_file(
+            "the column map " + columns_.path + " says that simulated is " + stated +
+                ", but column " + shown(column_) + " says " + shown(cells.text(column_)) +
+                " in line " + std::to_string(line),
+            "Name that column in the map: \"simulated\": {\"column\": " + shown(column_) + "}");
+    }
+
+  private:
+    const ColumnMap& columns_;
+    std::string column_;
+};
+
+Result<void> read_rows(CsvReader& csv, const CsvHeader& header, std::size_t width,
+                       const RowReader& reader, const SimulatedCheck& simulated,
+                       std::map<Key, Group>& groups, ImportedRows& out) {
     CsvRow row;
     while (csv.next(row)) {
         ++out.row_count;
@@ -67,8 +106,14 @@ void read_rows(CsvReader& csv, const CsvHeader& header, std::size_t width, const
             out.rejected.push_back({row.line, {}, row.fault});
             continue;
         }
+        const Cells cells(header, row.fields);
+        if (auto checked = simulated.check(cells, row.line); !checked) return checked.error();
+        if (reader.is_no_margin(cells)) {
+            out.not_margins.push_back(row.line);
+            continue;
+        }
         try {
-            LoggedRow logged = reader.read(Cells(header, row.fields));
+            LoggedRow logged = reader.read(cells);
             logged.line = row.line;
             Group& group = groups[{logged.condition, logged.tags, logged.simulated}];
             group.lanes[logged.lane].push_back(std::move(logged));
@@ -76,6 +121,7 @@ void read_rows(CsvReader& csv, const CsvHeader& header, std::size_t width, const
             out.rejected.push_back({row.line, bad.column(), bad.what()});
         }
     }
+    return {};
 }
 
 // In order of the file's ordinals, or of its lines where it has none.
@@ -186,7 +232,11 @@ Result<ImportedRows> import_rows(std::string_view text, const ColumnMap& columns
     if (!header) return header.error();
     ImportedRows out;
     std::map<Key, Group> groups;
-    read_rows(csv, *header, first.fields.size(), reader, groups, out);
+    const SimulatedCheck simulated(columns, *header);
+    if (auto read = read_rows(csv, *header, first.fields.size(), reader, simulated, groups, out);
+        !read) {
+        return read.error();
+    }
     const auto ordinal = columns.optional_columns.find("ordinal");
     const std::string* column =
         ordinal == columns.optional_columns.end() ? nullptr : &ordinal->second;

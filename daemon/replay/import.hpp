@@ -38,10 +38,14 @@ struct ImportedRun {
 struct ImportedRows {
     std::vector<ImportedRun> runs;
     std::vector<RejectedRow> rejected;  // in the order of the file
-    std::size_t row_count = 0;          // without the header
+    // Lines of the preflight's and the reference's rows without margins, such as single looks: no
+    // readings to replay, and no faults.
+    std::vector<std::size_t> not_margins;
+    std::size_t row_count = 0;  // without the header
 };
 
-// `board` gives limits, noise and bit rate: the board file's, or the column map's own.
+// A Fault, too, where a column `simulated` of the file says otherwise than the map does for all
+// rows. `board` gives limits, noise and bit rate: the board file's, or the column map's own.
 Result<ImportedRows> import_rows(std::string_view csv, const ColumnMap& columns,
                                  const BoardFile& board);
 

@@ -56,7 +56,8 @@ class Answers {
     const Reading* next(const Codes& codes, double error_ratio);
 
     std::size_t handed_out() const { return handed_out_; }
-    std::size_t again() const { return again_; }  // of these, handed out before
+    std::size_t again() const { return again_; }             // of these, handed out before
+    std::size_t code_count() const { return next_.size(); }  // different codes handed out
 
     // The readings of these codes at that error ratio: those that were handed out, each once, or
     // those that never were.

@@ -6,6 +6,8 @@
 #include <limits>
 #include <utility>
 
+#include "adapt/search/text.hpp"
+
 namespace lanewright {
 
 namespace {
@@ -57,6 +59,33 @@ bool parse_look(std::string_view text, Count& count) {
     return take(count.look.phase_ui, false) && take(count.look.offset_mv, false) &&
            take(count.look.bits, false) && take(count.errors, true) &&
            std::isfinite(count.look.phase_ui) && std::isfinite(count.look.offset_mv);
+}
+
+// No receiver sees a side of an eye beyond this, and no side is wider than a bit.
+constexpr double most_side_mv = 10000, most_side_ui = 1;
+
+void check_possible(MarginName name, double value, const std::string& column, const Cells& cells) {
+    const bool whole = name == MarginName::height || name == MarginName::width;
+    const double most = (is_height(name) ? most_side_mv : most_side_ui) * (whole ? 2 : 1);
+    if (std::abs(value) <= most) return;
+    const char* const unit = is_height(name) ? " mV" : " UI";
+    throw BadRow(column, "found " + shown(cells.text(column)) + ", which is " + general(value, 6) +
+                             unit + "; expected at most " + general(most, 6) + unit +
+                             " to either side; is the unit right?");
+}
+
+// An open eye has an opening in both directions.
+void check_open(const Reading& reading) {
+    if (reading.status != Status::open && reading.status != Status::saturated) return;
+    const auto negative = [](const std::optional<Measured>& whole,
+                             const std::optional<Measured>& one,
+                             const std::optional<Measured>& other) {
+        return (whole && whole->value < 0) || (one && other && one->value + other->value < 0);
+    };
+    const bool height = negative(reading.height_mv, reading.up_mv, reading.down_mv);
+    if (!height && !negative(reading.width_ui, reading.left_ui, reading.right_ui)) return;
+    throw BadRow({}, std::string("an open eye of negative ") + (height ? "height" : "width") +
+                         ", expected 0 or above, or the status closed");
 }
 
 std::vector<Count> counts(const Cells& cells, const std::string& column) {
@@ -121,7 +150,14 @@ Codes RowReader::codes(const Cells& cells) const {
         out.value.push_back(static_cast<std::int32_t>(
             cells.integer(column->column, field->lowest_allowed(), field->highest_allowed())));
     }
-    return out;
+    if (space_.allows(out)) return out;
+    std::string text;
+    for (std::size_t i = 0; i < out.value.size(); ++i) {
+        text +=
+            (i == 0 ? "" : ", ") + board_.dimensions[i].name + " " + std::to_string(out.value[i]);
+    }
+    throw BadRow({}, text + ": a combination that the file of board " + board_.name +
+                         " forbids; expected codes that it allows");
 }
 
 // One standard deviation where the file has no column of it: the monitor's step and repeatability.
@@ -140,6 +176,7 @@ std::optional<Measured> RowReader::margin(MarginName name, const Cells& cells) c
     Measured out;
     out.value = cells.number(column.column) * factor;
     out.bound = bound(cells, column.bound);
+    check_possible(name, out.value, column.column, cells);
     if (column.std_error.empty()) {
         out.std_error = noise_of(name);
     } else if (!cells.empty(column.std_error)) {
@@ -243,6 +280,20 @@ void RowReader::circumstances(const Cells& cells, Reading& reading) const {
     }
 }
 
+bool RowReader::is_no_margin(const Cells& cells) const {
+    const std::string* stage = optional("stage", cells);
+    if (stage == nullptr) return false;
+    const std::string_view word = cells.text(*stage);
+    if (word != "preflight" && word != "reference") return false;
+    const auto there = [&](MarginName name) {
+        const auto found = columns_.margins.find(name);
+        return found != columns_.margins.end() && !cells.empty(found->second.column);
+    };
+    const bool four = there(MarginName::up) && there(MarginName::down) && there(MarginName::left) &&
+                      there(MarginName::right);
+    return !four && !(there(MarginName::height) && there(MarginName::width));
+}
+
 LoggedRow RowReader::read(const Cells& cells) const {
     LoggedRow row;
     row.lane = columns_.lane.kind == Stated::Kind::column
@@ -253,6 +304,7 @@ LoggedRow RowReader::read(const Cells& cells) const {
     row.reading.codes = codes(cells);
     margins(cells, row.reading);
     status(cells, row.reading);
+    check_open(row.reading);
     slopes(cells, row.reading);
     circumstances(cells, row.reading);
     const auto ordinal = columns_.optional_columns.find("ordinal");

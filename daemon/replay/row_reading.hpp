@@ -8,6 +8,8 @@
 #include <optional>
 #include <string>
 
+#include "adapt/search/code_space.hpp"
+#include "daemon/engine/lane_setup.hpp"
 #include "daemon/replay/columns.hpp"
 #include "daemon/replay/csv_cells.hpp"
 #include "daemon/store/events.hpp"
@@ -31,11 +33,16 @@ struct LoggedRow {
 class RowReader {
   public:
     RowReader(const ColumnMap& columns, const BoardFile& board)
-        : columns_(columns), board_(board) {}
+        : columns_(columns), board_(board), space_(code_space_of(board)) {}
 
     // Every column that the map names, each once.
     std::vector<std::string> columns() const;
 
+    // A row of the preflight or the reference without all its margins, as single looks are: an
+    // export holds them beside the readings.
+    bool is_no_margin(const Cells& cells) const;
+
+    // Codes that the board forbids and margins that no eye has are BadRow, too.
     LoggedRow read(const Cells& cells) const;
 
   private:
@@ -51,6 +58,7 @@ class RowReader {
 
     const ColumnMap& columns_;
     const BoardFile& board_;
+    CodeSpace space_;
 };
 
 }  // namespace lanewright

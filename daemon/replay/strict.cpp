@@ -9,6 +9,7 @@
 #include <variant>
 
 #include "daemon/engine/lane_setup.hpp"
+#include "daemon/engine/preflight.hpp"
 #include "daemon/engine/run_state.hpp"
 #include "daemon/engine/version.hpp"
 #include "daemon/replay/reading_check.hpp"
@@ -341,6 +342,117 @@ EventsByLane by_lane(const Manifest& manifest, const std::vector<StoredEvent>& e
     return lanes;
 }
 
+bool same(const MonitorNoise& one, const MonitorNoise& other) {
+    return one.height_step_mv == other.height_step_mv && one.width_step_ui == other.width_step_ui &&
+           one.height_sigma_mv == other.height_sigma_mv &&
+           one.width_sigma_ui == other.width_sigma_ui &&
+           one.height_nonlinearity_mv == other.height_nonlinearity_mv &&
+           one.width_nonlinearity_ui == other.width_nonlinearity_ui;
+}
+
+std::string text_of(const MonitorNoise& noise) {
+    const nlohmann::json value{{"height_step_mv", noise.height_step_mv},
+                               {"width_step_ui", noise.width_step_ui},
+                               {"height_sigma_mv", noise.height_sigma_mv},
+                               {"width_sigma_ui", noise.width_sigma_ui},
+                               {"height_nonlinearity_mv", noise.height_nonlinearity_mv},
+                               {"width_nonlinearity_ui", noise.width_nonlinearity_ui}};
+    return value.dump();
+}
+
+std::string text_of(const Identity& identity) {
+    std::string out = identity.simulated ? "simulated" : "not simulated";
+    for (const IdentityValue& each : identity.values) {
+        out += ", " + each.name + " " + std::to_string(each.value);
+    }
+    return out;
+}
+
+// The noise that a lane was told must be what the stored items of the preflight give.
+std::optional<Difference> check_noise(const std::vector<StoredEvent>& events,
+                                      const BoardFile& board) {
+    RunState state;
+    for (const StoredEvent& stored : events) {
+        if (const auto* chosen = std::get_if<NoiseChosen>(&stored.event)) {
+            const auto wanted = measured_noise(state, monitor_noise_of(board));
+            if (!wanted || !same(*wanted, chosen->noise)) {
+                Difference out;
+                out.lane = chosen->lane;
+                out.run = stored.run;
+                out.seq = stored.seq;
+                out.event = kind_of(stored.event);
+                out.what = "the items of the preflight give another noise of the monitor";
+                out.expected = wanted ? text_of(*wanted) : "no measured noise";
+                out.found = text_of(chosen->noise);
+                return out;
+            }
+        }
+        state.apply(stored);
+    }
+    return std::nullopt;
+}
+
+// The identity stands in the manifest and in the first event, and part of it in the board file.
+std::optional<Difference> check_identity(const Manifest& manifest, const RunState& state,
+                                         const BoardFile& board) {
+    Difference out;
+    out.run = manifest.run;
+    out.event = "manifest";
+    out.found = text_of(manifest.identity);
+    if (state.identity && *state.identity != manifest.identity) {
+        out.what = "the run was begun with a board of another identity than its manifest has";
+        out.expected = text_of(*state.identity);
+        return out;
+    }
+    for (const IdentityExpectation& expected : board.identity.expect) {
+        for (const IdentityValue& value : manifest.identity.values) {
+            if (value.name != expected.name || value.value == expected.equals) continue;
+            out.what = "the board file expects another " + expected.name;
+            out.expected = expected.name + " " + std::to_string(expected.equals);
+            return out;
+        }
+    }
+    return std::nullopt;
+}
+
+// Whether the stored events could come of that seed, too.
+bool follows_from(std::uint64_t seed, const Manifest& manifest, const RunFiles& files,
+                  const std::vector<StoredEvent>& events) {
+    for (const auto& [lane, lane_events] : by_lane(manifest, events)) {
+        LaneMachine machine(lane_setup_of(files.board, files.recipe, Lane{lane}, seed));
+        try {
+            for (const StoredEvent* stored : lane_events) {
+                const auto* decided = std::get_if<LaneDecided>(&stored->event);
+                if (decided != nullptr) {
+                    const Action next = machine.next();
+                    const auto* decide = std::get_if<DoDecide>(&next);
+                    if (decide == nullptr ||
+                        text_of(decide->decision) != text_of(decided->decision))
+                        return false;
+                }
+                machine.apply(stored->event);
+            }
+        } catch (const Diverged&) {
+            return false;
+        }
+    }
+    return true;
+}
+
+std::vector<std::string> not_checked_of(const Manifest& manifest, const RunFiles& files,
+                                        const RunState& state,
+                                        const std::vector<StoredEvent>& events) {
+    std::vector<std::string> out;
+    if (follows_from(manifest.seed ^ 1, manifest, files, events)) {
+        out.emplace_back("the seed (another one gives the same events)");
+    }
+    out.emplace_back(state.identity ? "what the board itself reported as its identity"
+                                    : "the identity (no event tells it)");
+    out.emplace_back("items of the preflight that no lane's readings give");
+    out.emplace_back("times, tags and condition");
+    return out;
+}
+
 }  // namespace
 
 StrictReport replay_strictly(const Manifest& manifest, const std::vector<StoredEvent>& events) {
@@ -362,6 +474,9 @@ StrictReport replay_strictly(const Manifest& manifest, const std::vector<StoredE
     StrictReport report;
     report.run = manifest.run;
     report.notes = notes_of(manifest, state);
+    report.difference = check_identity(manifest, state, files.board);
+    if (!report.difference) report.difference = check_noise(events, files.board);
+    if (report.difference) return report;
     const bool complete = state.ended && state.ended->ending == Ending::complete;
     for (const auto& [lane, lane_events] : by_lane(manifest, events)) {
         LaneReplay replay(lane_setup_of(files.board, files.recipe, Lane{lane}, manifest.seed),
@@ -375,8 +490,9 @@ StrictReport replay_strictly(const Manifest& manifest, const std::vector<StoredE
         report.lanes.push_back(replay.tally);
         if (!report.difference) continue;
         report.difference->run = manifest.run;
-        break;
+        return report;
     }
+    report.not_checked = not_checked_of(manifest, files, state, events);
     return report;
 }
 

@@ -39,6 +39,9 @@ struct StrictReport {
     RunId run;
     std::vector<StrictLane> lanes;   // as far as it came
     std::vector<std::string> notes;  // another version, another CPU, a run that did not end
+    // What could be altered in the store and not be noticed here, as the rest does not follow from
+    // it: "the seed (...)".
+    std::vector<std::string> not_checked;
     std::optional<Difference> difference;
 };
 

@@ -131,3 +131,20 @@ TEST_CASE("A shift is significant where it is, and seldom where there is none") 
     CHECK(false_alarms < 150);
     CHECK(false_alarms > 50);
 }
+
+TEST_CASE("A counted eye that noise alone closes has not shifted, one that really closes has") {
+    const Reading before = reading(2, 2, 0.05, 0.05);
+    Reading now = reading(-0.5, 1.2, -0.01, -0.01);
+    now.status = Status::closed;
+    CHECK_FALSE(significant_shift(before, now, noise, false));
+    now.up_mv->value = -6;
+    const auto shift = significant_shift(before, now, noise, false);
+    REQUIRE(shift);
+    CHECK_FALSE(shift->gone);
+    // 8 mV over the root of twice 1 mV squared.
+    CHECK(shift->standard_errors == Approx(8 / std::sqrt(2.0)));
+    CHECK(text_of(*shift) == "the up edge from 2.0 to -6.0 mV, 5.7 standard errors");
+    // A receiver without lock has no edges to compare.
+    now.status = Status::no_lock;
+    CHECK(significant_shift(before, now, noise, false)->gone);
+}

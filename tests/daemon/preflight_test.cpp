@@ -219,6 +219,26 @@ TEST_CASE("A monitor that repeats itself worse than the board file allows stops 
     check_stopped(bench, start, item::repeatability);
 }
 
+TEST_CASE("Readings that are all the same do not replace the declared noise by none") {
+    RunState state;
+    PreflightItem repeats;
+    repeats.name = item::repeatability;
+    repeats.result = ItemResult::passed;
+    repeats.values = {{"height_sigma_mv", 0}, {"width_sigma_ui", 0}};
+    MonitorNoise declared;
+    declared.height_step_mv = 2;
+    declared.height_sigma_mv = 1;
+    declared.width_sigma_ui = 0.006;
+    state.preflight = {repeats};
+    CHECK_FALSE(measured_noise(state, declared));
+    state.preflight[0].values["height_sigma_mv"] = 0.1;
+    // A step of 2 mV hides an even spread of 2 / sqrt(12) mV (Sheppard, 1898).
+    CHECK(measured_noise(state, declared)->height_sigma_mv == Approx(0.57735).epsilon(1e-4));
+    CHECK(measured_noise(state, declared)->width_sigma_ui == 0.006);
+    state.preflight[0].values["height_sigma_mv"] = 1.5;
+    CHECK(measured_noise(state, declared)->height_sigma_mv == 1.5);
+}
+
 TEST_CASE("Codes that do not come back to where they were stop the run") {
     EngineBench bench;
     const Start start = bench.start(with_preflight(), [](FakeBoard& board) {
@@ -259,7 +279,8 @@ TEST_CASE("Lanes that disturb each other are run one at a time") {
     const PreflightItem* parallel = start.state.item(item::parallel);
     REQUIRE(parallel != nullptr);
     CHECK(parallel->result == ItemResult::noted);
-    CHECK(parallel->found.find("lanes 0 and 2 do not") != std::string::npos);
+    CHECK(parallel->found.find("lanes 0 and 2 read otherwise together than alone: ") !=
+          std::string::npos);
     // One lane is through before the other's search begins.
     bool first_is_through = false;
     for (const StoredEvent& event : start.events) {

@@ -24,9 +24,9 @@ const std::string required =
 const std::string dimensions = "\"dimensions\": [\"r1\", \"c1\"]";
 const std::string strategy = "\"strategy\": {\"name\": \"exhaustive\"}";
 
-BoardFile demo_board() {
+BoardFile demo_board(const std::string& name = "demo") {
     Complaints complaints;
-    auto board = load_board_file(source_dir + "/configs/boards/demo.json", complaints);
+    auto board = load_board_file(source_dir + "/configs/boards/" + name + ".json", complaints);
     INFO(complaints.text());
     REQUIRE(board);
     return *board;
@@ -40,14 +40,14 @@ std::string complaints_of_decoding(const std::string& lines) {
     return complaints.text();
 }
 
-std::string complaints_against_board(const std::string& lines) {
+std::string complaints_against_board(const std::string& lines, const std::string& board = "demo") {
     Complaints complaints;
     const auto document = Document::parse(recipe_text(lines), "r.json", complaints);
     REQUIRE(document);
     const auto recipe = decode_recipe(*document, complaints);
     INFO(complaints.text());
     REQUIRE(recipe);
-    check_recipe_against_board(*recipe, demo_board(), strategies_known, complaints);
+    check_recipe_against_board(*recipe, demo_board(board), strategies_known, complaints);
     return complaints.text();
 }
 
@@ -142,6 +142,53 @@ TEST_CASE("a search error ratio that one look cannot show is refused, with what 
     const double longer_s = std::stod(said.substr(at + hint.size()));
     CHECK(longer_s == Approx(std::exp2(32) / 25e9).epsilon(0.01));
     CHECK(complaints_against_board(lines(std::to_string(longer_s))).empty());
+}
+
+TEST_CASE("a ratio that a counting monitor only extrapolates to needs the recipe's word") {
+    const auto lines = [](const std::string& ratio, const std::string& more) {
+        return dimensions + ",\n\"required\": {\"error_ratio\": " + ratio +
+               ", \"height_mv\": 30, \"width_ui\": 0.25},\n" + strategy + more;
+    };
+    const auto said_of = [&](const std::string& ratio, const std::string& more = "") {
+        return complaints_against_board(lines(ratio, more), "demo_counted");
+    };
+    const auto number_after = [](const std::string& said, const std::string& words) {
+        const std::size_t at = said.find(words);
+        REQUIRE(at != std::string::npos);
+        return said.substr(at + words.size(),
+                           said.find_first_of(", \n", at + words.size()) - at - words.size());
+    };
+    CHECK(said_of("1e-6").empty());
+    const std::string said = said_of("1e-9");
+    CHECK(said.find("r.json:3:29: /required/error_ratio: found 1e-09") == 0);
+    CHECK(said.find("no verdict \"meets\"") != std::string::npos);
+    CHECK(said_of("1e-9", ",\n\"accept_extrapolated\": true").empty());
+    // What it advises is enough, and not much more than enough.
+    const std::string ratio = number_after(said, "an error ratio of ");
+    CHECK(said_of(ratio).empty());
+    CHECK_FALSE(said_of(std::to_string(std::stod(ratio) * 1e9 * 0.95) + "e-9").empty());
+    const std::string dwell_s = number_after(said, "a dwell_s of ");
+    CHECK(said_of("1e-9", ",\n\"dwell_s\": " + dwell_s + ", \"search_error_ratio\": 1e-6").empty());
+    CHECK_FALSE(
+        said_of("1e-9", ",\n\"dwell_s\": " + std::to_string(std::stod(dwell_s) * 0.95)).empty());
+}
+
+TEST_CASE("a budget that does not pay for a single reading is refused, with what one costs") {
+    const auto said_of = [](const std::string& budget) {
+        return complaints_against_board(dimensions + ",\n" + required + ",\n" + strategy +
+                                        ",\n\"dwell_s\": 0.2, \"budget\": {" + budget + "}");
+    };
+    // At 25 Gb/s 0.2 s is nearest to 2^32 bits, 0.172 s: 1.72 standard readings of 0.1 s, and with
+    // 1 ms of settling and 0.2 ms a look 0.173 s of bench time.
+    const std::string readings = said_of("\"standard_readings\": 1");
+    CHECK(readings.find("/budget/standard_readings: found 1, expected at least 1.72 ") !=
+          std::string::npos);
+    CHECK(said_of("\"standard_readings\": 1.72").empty());
+    const std::string seconds = said_of("\"bench_s\": 0.1");
+    CHECK(seconds.find("/budget/bench_s: found 0.1, expected at least 0.173 s ") !=
+          std::string::npos);
+    CHECK(said_of("\"bench_s\": 0.173").empty());
+    CHECK(said_of("\"bench_s\": 0").empty());
 }
 
 TEST_CASE("a margin beyond the monitor's range and a dwell beyond its field are refused") {

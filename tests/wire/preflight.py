@@ -125,6 +125,7 @@ class Healthy(WithBench):
 class Failing(WithBench):
     # Switch of the target, its value, the item that must be named, the board file.
     CASES = [("reference_clock", "absent", "reference_clock", None),
+             ("reference_clock", "off", "reference_clock", None),
              ("no_lock", [2], "lock", None),
              ("pattern_out_of_sync", [2], "pattern_sync", None),
              ("inverted", [2], "polarity", None),
