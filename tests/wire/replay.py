@@ -105,7 +105,8 @@ class Strict(WithRun):
         self.assertEqual(too_wide(text.stdout), [])
 
     def test_other_alterations_are_found(self):
-        """A margin, a request, a decision, left codes, a missing reading, a changed recipe."""
+        """A margin, a request, a decision, left codes, a missing reading, a changed recipe, the noise
+        that the lanes were given, the board's identity."""
         def sql(statement):
             return lambda store: self.assertGreater(store.execute(statement).rowcount, 0)
         cases = {
@@ -120,6 +121,10 @@ class Strict(WithRun):
             "reading": lambda store: [store.execute(s) for s in (
                 "DELETE FROM events WHERE seq = (SELECT event FROM readings WHERE lane = 1 AND "
                 "ordinal = 4)", "DELETE FROM readings WHERE lane = 1 AND ordinal = 4")],
+            "noise": sql("UPDATE events SET body = replace(body, '\"height_sigma_mv\":', "
+                         "'\"height_sigma_mv\":1') WHERE kind = 'noise_chosen'"),
+            "identity": sql("UPDATE events SET body = replace(body, '104729', '104730') "
+                            "WHERE kind = 'identified'"),
             "recipe": sql("UPDATE runs SET manifest = replace(manifest, 'Coordinate descent', "
                           "'Coordinate ascent')"),
         }
